@@ -1,0 +1,1 @@
+"""Filters, tails and the grammar that joins them into forecast models."""

@@ -1,0 +1,1 @@
+"""Tests of forecasts, one family a file, all answering with the same frozen Result."""

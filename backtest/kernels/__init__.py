@@ -1,0 +1,1 @@
+"""Numbers only: arrays in, fresh arrays out; one idea a file."""

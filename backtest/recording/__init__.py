@@ -1,0 +1,1 @@
+"""The run folder: what a run keeps, written atomically."""

@@ -1,0 +1,1 @@
+"""From a record to pages: reads, words and draws; never fits or tests."""

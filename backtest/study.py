@@ -1,0 +1,240 @@
+"""The study file: one TOML file says what is reviewed, where the data lie and how the extract is written.
+
+Here its form is checked: keys, types, ranges, paths. Whether a model, test or rule of that name exists is asked by
+the room that owns the name. Unknown keys are refused with the near miss; nothing is guessed.
+"""
+
+import datetime as dt
+import tomllib
+from pathlib import Path, PurePosixPath
+from typing import Annotated, Any, Literal
+
+from pydantic import AfterValidator, BaseModel, ConfigDict, Field, ValidationError, model_validator
+
+from backtest.errors import StudyError, near_miss
+
+
+def _inside(path: str) -> str:
+    pure = PurePosixPath(path.replace("\\", "/"))
+    if pure.is_absolute() or ".." in pure.parts or ":" in path:
+        raise ValueError("paths are relative to the study file and stay inside its folder")
+    return path
+
+
+def _one_character(text: str) -> str:
+    if len(text) != 1:
+        raise ValueError("must be one character")
+    return text
+
+
+Level = Annotated[float, Field(gt=0.5, lt=1.0)]
+FilePath = Annotated[str, AfterValidator(_inside), Field(min_length=1)]
+Character = Annotated[str, AfterValidator(_one_character)]
+
+
+class _Form(BaseModel):
+    model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True, strict=False)
+
+
+class Method(_Form):
+    """How the reported model works from a date on, in the model grammar, so that it can be performed again."""
+
+    since: dt.date = Field(alias="from")
+    filter: str = "none"
+    tail: str = "empirical"
+    window: int = Field(ge=50)
+    decay: float | None = Field(default=None, gt=0, lt=1)
+    mean: str | None = None
+    innovations: str | None = None
+    start: str | None = None
+    tail_share: float | None = Field(default=None, gt=0, lt=0.5)
+
+
+class Review(_Form):
+    """The reported model under review and the spans it is judged on."""
+
+    subject: str | None = None
+    firm: str | None = None
+    as_of: dt.date | None = None
+    days: tuple[Annotated[int, Field(ge=20)] | Literal["all"], ...] = (250, "all")
+    rules: str | None = None
+    method: tuple[Method, ...] = ()
+
+    @model_validator(mode="after")
+    def _methods_in_order(self) -> "Review":
+        starts = [m.since for m in self.method]
+        if starts != sorted(set(starts)):
+            raise ValueError(
+                "[[review.method]] blocks must be in order of their 'from' dates, each date once"
+            )
+        return self
+
+
+class LevelColumn(_Form):
+    """A column of a wide extract that holds one measure at one level."""
+
+    column: str
+    level: Level
+
+
+class Columns(_Form):
+    """Names in the extract where they differ from ours; a wide file maps a column to a measure and a level."""
+
+    date: str = "date"
+    desk: str = "desk"
+    hypothetical: str = "hypothetical"
+    actual: str = "actual"
+    risk_theoretical: str = "risk_theoretical"
+    risk_theoretical_aligned: str = "risk_theoretical_aligned"
+    currency: str = "currency"
+    known_on: str = "known_on"
+    flag: str = "flag"
+    model: str = "model"
+    level: str = "level"
+    var: str | tuple[LevelColumn, ...] = "var"
+    es: str | tuple[LevelColumn, ...] = "es"
+    sigma: str = "sigma"
+    pit: str = "pit"
+
+
+class Data(_Form):
+    """Where the tables lie and how they are written. ``reported_columns`` overrides ``columns`` for that file."""
+
+    pnl: FilePath
+    reported: FilePath | None = None
+    desks: FilePath | None = None
+    changes: FilePath | None = None
+    calendar: FilePath | None = None
+    currency: str = "EUR"
+    var_date: Literal["target", "as-of"] = "target"
+    pnl_sign: Literal["profit-positive", "loss-positive"] = "profit-positive"
+    var_sign: Literal["positive", "negative"] = "positive"
+    separator: Character = ","
+    decimal: Literal[".", ","] = "."
+    encoding: str = "utf-8"
+    date_format: str = "%Y-%m-%d"
+    columns: Columns = Columns()
+    reported_columns: Columns | None = None
+
+    @model_validator(mode="after")
+    def _separators_differ(self) -> "Data":
+        if self.separator == self.decimal:
+            raise ValueError("separator and decimal cannot be the same character")
+        return self
+
+
+class ModelSettings(_Form):
+    """A pair of filter and tail, named by the user; names are resolved by the model grammar."""
+
+    name: str = Field(min_length=1)
+    filter: str = "none"
+    tail: str = "empirical"
+    decay: float | None = Field(default=None, gt=0, lt=1)
+    mean: str | None = None
+    innovations: str | None = None
+    start: str | None = None
+    tail_share: float | None = Field(default=None, gt=0, lt=0.5)
+    gpd_fit: str | None = None
+    window: int | None = Field(default=None, ge=50)
+    recalibrate_days: int | None = Field(default=None, ge=1)
+
+
+class Forecast(_Form):
+    """Which challengers are run, on which past."""
+
+    window: int = Field(default=1000, ge=50)
+    recalibrate_days: int = Field(default=1, ge=1)
+    levels: tuple[Level, ...] = Field(default=(0.975, 0.99), min_length=1)
+    learn_from: Literal["hypothetical", "actual"] = "hypothetical"
+    fallback_share: float = Field(default=0.01, ge=0, le=1)
+    every_start: bool = False
+    models: tuple[str, ...] = ("historical", "filtered-historical", "unconditional-evt", "conditional-evt")
+    model: tuple[ModelSettings, ...] = ()
+
+
+class Judge(_Form):
+    """Which tests are asked, and how finely their laws are simulated."""
+
+    tests: Literal["default"] | tuple[str, ...] = "default"
+    significance: float = Field(default=0.05, gt=0, lt=0.5)
+    simulations: int = Field(default=9999, ge=99)
+
+
+class Study(_Form):
+    """A study as read: every key of the file, with defaults filled in, and the file it came from."""
+
+    title: str = "Market-risk model review"
+    seed: int = Field(default=20260101, ge=0)
+    review: Review = Review()
+    data: Data
+    forecast: Forecast = Forecast()
+    judge: Judge = Judge()
+    path: Path = Field(default=Path("study.toml"), exclude=True)
+
+    @property
+    def folder(self) -> Path:
+        """The folder that the study's paths are relative to."""
+        return self.path.parent
+
+
+def read_study(path: str | Path) -> Study:
+    """Read a study file and check its form.
+
+    Returns the frozen Study. Raises StudyError (file, key, value, remedy) where the file cannot be read, is no TOML,
+    has an unknown key, a value out of range or a path outside its folder.
+    """
+    path = Path(path)
+    try:
+        table = tomllib.loads(path.read_bytes().decode("utf-8"))
+    except OSError as error:
+        raise StudyError("the study file cannot be read", value=error.strerror, place=str(path)) from None
+    except (UnicodeDecodeError, tomllib.TOMLDecodeError) as error:
+        raise StudyError(f"the study file is not valid TOML: {error}", place=str(path)) from None
+    if "path" in table:
+        raise StudyError("unknown key 'path'", place=str(path), remedy=near_miss("path", _known_keys(())))
+    try:
+        return Study.model_validate({**table, "path": path})
+    except ValidationError as error:
+        raise _explain(error, path) from None
+
+
+_UNION_NAMES = {"str", "constrained-int", "literal['default']", "literal['all']"}
+"""Parts of pydantic's address of an error that name a branch of a union, not a key of the file."""
+
+
+def _explain(error: ValidationError, path: Path) -> StudyError:
+    first = max(error.errors(), key=lambda e: len(e["loc"]))
+    where = tuple(
+        part for part in first["loc"] if part not in _UNION_NAMES and not str(part).startswith("tuple[")
+    )
+    key = ".".join(str(part) for part in where)
+    more = len(error.errors()) - 1
+    tail = f" (and {more} more)" if more and first["type"] != "extra_forbidden" else ""
+    if first["type"] == "extra_forbidden":
+        return StudyError(
+            f"unknown key {key!r}", place=str(path), remedy=near_miss(str(where[-1]), _known_keys(where[:-1]))
+        )
+    if first["type"] == "missing":
+        return StudyError(
+            f"required key {key!r} is missing", place=str(path), remedy="Add it to the study file."
+        )
+    message = first["msg"].removeprefix("Value error, ")
+    value = None if isinstance(first["input"], dict | tuple | list) else first["input"]
+    remedy = "A level is a confidence such as 0.99, never 1 or 99." if "level" in key else ""
+    return StudyError(f"{key or 'study'}: {message}{tail}", place=str(path), value=value, remedy=remedy)
+
+
+def _known_keys(where: tuple[Any, ...]) -> set[str]:
+    form: Any = Study
+    for part in where:
+        if isinstance(part, int):
+            continue
+        field = next(f for n, f in form.model_fields.items() if part in (n, f.alias))
+        forms = [a for a in _flatten(field.annotation) if isinstance(a, type) and issubclass(a, _Form)]
+        form = forms[0]
+    return {f.alias or n for n, f in form.model_fields.items()} - {"path"}
+
+
+def _flatten(annotation: Any) -> list[Any]:
+    parts = getattr(annotation, "__args__", ())
+    return [annotation] + [inner for part in parts for inner in _flatten(part)]
