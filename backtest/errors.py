@@ -15,9 +15,7 @@ class TailmarkError(Exception):
     ``remedy`` (one clause). The text of the error is one line.
     """
 
-    def __init__(
-        self, what: str, *, rule: str = "", value: object = None, place: str = "", remedy: str = ""
-    ) -> None:
+    def __init__(self, what: str, *, rule: str = "", value: object = None, place: str = "", remedy: str = "") -> None:
         self.what, self.rule, self.value, self.place, self.remedy = what, rule, value, place, remedy
         super().__init__(self._line())
 

@@ -64,9 +64,7 @@ class Review(_Form):
     def _methods_in_order(self) -> "Review":
         starts = [m.since for m in self.method]
         if starts != sorted(set(starts)):
-            raise ValueError(
-                "[[review.method]] blocks must be in order of their 'from' dates, each date once"
-            )
+            raise ValueError("[[review.method]] blocks must be in order of their 'from' dates, each date once")
         return self
 
 
@@ -204,9 +202,7 @@ _UNION_NAMES = {"str", "constrained-int", "literal['default']", "literal['all']"
 
 def _explain(error: ValidationError, path: Path) -> StudyError:
     first = max(error.errors(), key=lambda e: len(e["loc"]))
-    where = tuple(
-        part for part in first["loc"] if part not in _UNION_NAMES and not str(part).startswith("tuple[")
-    )
+    where = tuple(part for part in first["loc"] if part not in _UNION_NAMES and not str(part).startswith("tuple["))
     key = ".".join(str(part) for part in where)
     more = len(error.errors()) - 1
     tail = f" (and {more} more)" if more and first["type"] != "extra_forbidden" else ""
@@ -215,9 +211,7 @@ def _explain(error: ValidationError, path: Path) -> StudyError:
             f"unknown key {key!r}", place=str(path), remedy=near_miss(str(where[-1]), _known_keys(where[:-1]))
         )
     if first["type"] == "missing":
-        return StudyError(
-            f"required key {key!r} is missing", place=str(path), remedy="Add it to the study file."
-        )
+        return StudyError(f"required key {key!r} is missing", place=str(path), remedy="Add it to the study file.")
     message = first["msg"].removeprefix("Value error, ")
     value = None if isinstance(first["input"], dict | tuple | list) else first["input"]
     remedy = "A level is a confidence such as 0.99, never 1 or 99." if "level" in key else ""
