@@ -1,0 +1,1 @@
+"""What needs forecasting and judging together."""

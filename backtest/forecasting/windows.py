@@ -1,0 +1,104 @@
+"""The only index arithmetic: which past stands before which day.
+
+Target days are business days; the past of a target is the last W losses known the evening before it. A restated value
+enters only once known, so a desk's history has epochs, each with its own series. "Before" is written here and nowhere
+else, and no model is handed anything later.
+"""
+
+from dataclasses import dataclass
+from itertools import pairwise
+
+import numpy as np
+import pandas as pd
+
+BLOCK_DAYS = 256
+"""Weekday numbers per block: the unit of warm starts, parallel work and memory."""
+
+
+def weekday_numbers(days: np.ndarray) -> np.ndarray:
+    """Return the Monday-to-Friday number since 1970 of each day (datetime64[D]), whatever the calendar."""
+    return np.busday_count(np.datetime64("1970-01-01"), days).astype(np.int64)
+
+
+@dataclass(frozen=True)
+class Epoch:
+    """A stretch of target days with the same knowledge of restated values: the known days and their losses."""
+
+    days: np.ndarray
+    losses: np.ndarray
+
+
+@dataclass(frozen=True)
+class Plan:
+    """The target days of one desk and where the past of each lies.
+
+    targets, origins: datetime64[D] (n); places: weekday numbers (n); epoch: index into ``epochs`` (n); ends: position
+    after the last loss of the past in that epoch's series (n); window: W.
+    """
+
+    targets: np.ndarray
+    origins: np.ndarray
+    places: np.ndarray
+    epoch: np.ndarray
+    ends: np.ndarray
+    epochs: tuple[Epoch, ...]
+    window: int
+
+    def pasts(self, rows: slice) -> np.ndarray:
+        """Return the pasts of the target rows, losses (n, W), contiguous: kernels are compiled for one layout."""
+        ends, epoch = self.ends[rows], self.epoch[rows]
+        if len(ends) and epoch[0] == epoch[-1] and np.all(np.diff(ends) == 1):
+            losses = self.epochs[epoch[0]].losses[ends[0] - self.window : ends[-1]]
+            return np.ascontiguousarray(np.lib.stride_tricks.sliding_window_view(losses, self.window))
+        picked = [self.epochs[e].losses[end - self.window : end] for e, end in zip(epoch, ends, strict=True)]
+        return np.array(picked).reshape(len(ends), self.window)
+
+    def blocks(self) -> list[slice]:
+        """Return the rows of each block, in order: a block is a fixed stretch of weekday numbers."""
+        edges = np.flatnonzero(np.diff(self.places // BLOCK_DAYS)) + 1
+        bounds = [0, *edges.tolist(), len(self.places)]
+        return [slice(a, b) for a, b in pairwise(bounds) if b > a]
+
+    def refits(self, rows: slice, every: int) -> np.ndarray:
+        """Tell which rows of a block recalibrate: the first, and each whose place // every differs from the last's."""
+        turn = self.places[rows] // every
+        return np.concatenate([[True], turn[1:] != turn[:-1]]) if len(turn) else np.zeros(0, dtype=bool)
+
+
+def plan(known: pd.DataFrame, calendar: np.ndarray, window: int) -> Plan:
+    """Pair each target day of one desk with the past known the evening before it.
+
+    ``known``: ``date, known_on, loss`` of one desk, several rows a date where restated, NaN where there is no P&L;
+    ``calendar``: business days (datetime64[D], ascending), the last of which is the last target.
+    """
+    known = known.dropna(subset=["loss"]).sort_values(["date", "known_on"], kind="stable")
+    dates = known["date"].to_numpy().astype("datetime64[D]")
+    learnt = known["known_on"].to_numpy().astype("datetime64[D]")
+    losses = known["loss"].to_numpy(dtype=np.float64)
+    late = learnt > dates
+    changes = np.unique(learnt[late])
+    # A value learnt on day k serves targets after k: targets <= changes[0] are epoch 0, and so on.
+    number = np.searchsorted(changes, calendar, side="left")
+    epochs, parts = [], []
+    for e in np.unique(number):
+        limit = changes[e - 1] if e else None
+        epochs.append(_epoch(dates, learnt, losses, late, limit))
+        targets = calendar[number == e]
+        ends = np.searchsorted(epochs[-1].days, targets, side="left")
+        enough = ends >= window
+        parts.append((targets[enough], ends[enough], np.full(enough.sum(), len(epochs) - 1)))
+    targets, ends, epoch = (np.concatenate([p[i] for p in parts]) if parts else calendar[:0] for i in range(3))
+    ends, epoch = ends.astype(np.int64), epoch.astype(np.int64)
+    origins = np.array([epochs[e].days[end - 1] for e, end in zip(epoch, ends, strict=True)], dtype="datetime64[D]")
+    return Plan(targets, origins, weekday_numbers(targets), epoch, ends, tuple(epochs), window)
+
+
+def _epoch(
+    dates: np.ndarray, learnt: np.ndarray, losses: np.ndarray, late: np.ndarray, limit: np.datetime64 | None
+) -> Epoch:
+    """Return the series in which every late value learnt by ``limit`` has taken the place of what it restates."""
+    seen = ~late if limit is None else ~late | (learnt <= limit)
+    days, kept = dates[seen], losses[seen]
+    last = np.ones(len(days), dtype=bool)
+    last[:-1] = days[1:] != days[:-1]
+    return Epoch(days[last], kept[last])

@@ -1,0 +1,1 @@
+"""Dated rules as data: one profile a file, each number with its text, date and paragraph."""

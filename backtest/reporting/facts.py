@@ -1,0 +1,151 @@
+"""What the six sentences say, as facts, before any of it becomes text."""
+
+from dataclasses import dataclass
+
+from backtest.reporting.book import Span
+
+ZONES = ("green", "amber", "yellow", "red")
+"""Words of dated rules for their zones."""
+
+
+@dataclass(frozen=True)
+class Scope:
+    """What the first page is about: a desk, a model, a span, the level of counts and the level of sizes."""
+
+    desk: str
+    is_firm: bool
+    desks: int
+    model: str
+    is_subject: bool
+    span: Span
+    wanted_days: int | None
+    count_level: float
+    size_level: float
+    kind: str
+    currency: str
+    significance: float
+
+
+@dataclass(frozen=True)
+class Count:
+    """Exceptions counted on one P&L kind, with the exact binomial p-value where there is one."""
+
+    name: str
+    exceptions: int
+    days: int
+    p: float | None
+    rejected: bool
+
+
+@dataclass(frozen=True)
+class RuleCount:
+    """What a dated rule says: its count, zone and multiplier; ``note`` why there is no zone, where there is none."""
+
+    name: str
+    count: int | None
+    zone: str
+    multiplier: float | None
+    note: str
+
+
+@dataclass(frozen=True)
+class Often:
+    """How often: counts of the model by P&L kind; of the challengers where there is no reported model."""
+
+    scope: Scope
+    counts: tuple[Count, ...]
+    rule: RuleCount | None
+
+
+@dataclass(frozen=True)
+class When:
+    """When: how close together most exceptions fall, and what the independence test says."""
+
+    scope: Scope
+    exceptions: int
+    days: int
+    inside: int
+    width: int
+    first: str
+    last: str
+    p: float | None
+    rejected: bool
+    note: str
+
+
+@dataclass(frozen=True)
+class Sufficient:
+    """The multiple of a reported measure that would have sufficed, and the average of the measure in money."""
+
+    measure: str
+    estimate: float | None
+    low: float | None
+    high: float | None
+    average: float | None
+    note: str
+
+
+@dataclass(frozen=True)
+class Size:
+    """By how much: the sufficient multiples of VaR and, where known, of ES."""
+
+    scope: Scope
+    var: Sufficient
+    es: Sufficient | None
+
+
+@dataclass(frozen=True)
+class Step:
+    """One step of the bridge; amounts in money, ``score_change`` against the step before (below 0: better)."""
+
+    name: str
+    model: str
+    window: int | None
+    exceptions: int | None
+    average_var: float | None
+    average_change: float | None
+    score_name: str
+    score_change: float | None
+    low: float | None
+    high: float | None
+    note: str
+
+
+@dataclass(frozen=True)
+class Bridge:
+    """The bridge of one desk at one level: every step over the same shared days; without steps ``note`` says why."""
+
+    desk: str
+    level: float | None
+    kind: str
+    first: str
+    last: str
+    days: int
+    currency: str
+    steps: tuple[Step, ...]
+    note: str
+
+
+@dataclass(frozen=True)
+class Power:
+    """The power of the one-sided exact binomial test at the length of this review."""
+
+    level: float
+    nominal_rate: float
+    true_rate: float
+    days: int
+    power: float
+
+
+@dataclass(frozen=True)
+class Person:
+    """What needs a person."""
+
+    scope: Scope
+    forecasts: int
+    fallbacks: int
+    remarks: int
+    exceptions: int
+    since: str
+    unforecast: tuple[str, ...]
+    short: tuple[tuple[str, int], ...]

@@ -1,0 +1,122 @@
+"""The verbs on tables, pandas in and out: forecast and judge; and the loop over desks that a run shares with them."""
+
+from collections.abc import Callable, Mapping, Sequence
+from typing import Any
+
+import joblib
+import numpy as np
+import pandas as pd
+
+from backtest.errors import StudyError
+from backtest.forecasting.engine import DeskHistory, forecast_group, groups, joined
+from backtest.forecasting.histories import desk_histories
+from backtest.forecasting.models import Model, resolve_all
+from backtest.judging import battery
+from backtest.kernels.compiled import is_warm
+from backtest.reading.frames import pnl_table
+from backtest.records import FIT_COLUMNS, FORECAST_COLUMNS, PNL_KINDS, latest_known, results_table
+
+Progress = Callable[[str, int, int], None]
+"""Called with what is being done, how much of it is done, and of how much."""
+
+DEFAULT_MODELS = ("historical", "filtered-historical", "unconditional-evt", "conditional-evt")
+
+
+def silent(what: str, done: int, total: int) -> None:
+    """Show no progress."""
+
+
+def forecast(
+    pnl: pd.DataFrame | pd.Series,
+    models: Sequence[str | Mapping[str, Any]] = DEFAULT_MODELS,
+    levels: Sequence[float] = (0.975, 0.99),
+    window: int = 1000,
+    *,
+    recalibrate_days: int = 1,
+    learn_from: str = "hypothetical",
+    calendar: Sequence[Any] | np.ndarray | None = None,
+    every_start: bool = False,
+    workers: int = 1,
+    progress: Progress | None = None,
+) -> pd.DataFrame:
+    """Forecast one-day VaR and ES of every desk and day by every model, without look-ahead.
+
+    ``pnl``: long table ``date, desk, hypothetical`` (also ``actual``, ``known_on``) or a Series indexed by date, profit
+    positive; ``models``: names or mappings with the keys of ``[[forecast.model]]``; ``calendar``: business days, else
+    the union of the table's days. Returns the forecasts table (``records.FORECAST_COLUMNS``); the number of ``workers``
+    (threads) changes nothing in it. Raises StudyError for models, levels or settings that do not exist or do not fit,
+    DataError for a table that cannot be used.
+    """
+    _check_levels(levels)
+    resolved = resolve_all(
+        models, levels=levels, window=window, recalibrate_days=recalibrate_days, every_start=every_start
+    )
+    table = pnl_table(pnl)
+    if learn_from not in PNL_KINDS or learn_from not in table:
+        raise StudyError("learn_from names no P&L of the table", value=learn_from, place="forecast")
+    days = table["date"].to_numpy() if calendar is None else np.asarray(calendar)
+    business = np.unique(days.astype("datetime64[D]"))
+    histories = desk_histories(table, business, business[-1], learn_from, None)
+    forecasts, _ = forecast_desks(histories, resolved, levels, workers, progress or silent)
+    return forecasts
+
+
+def judge(
+    pnl: pd.DataFrame | pd.Series,
+    forecasts: pd.DataFrame,
+    tests: str | Sequence[str] = "default",
+    simulations: int = 9999,
+    seed: int = 1,
+    *,
+    days: Sequence[int | str] = ("all",),
+    significance: float = 0.05,
+) -> pd.DataFrame:
+    """Judge forecasts against P&L: one row a desk x model x P&L kind x level x span x test (``results.csv``).
+
+    ``forecasts``: any table with ``date, desk, model, level, var`` and, where known, ``es, sigma, shape``; a test that
+    needs what is missing answers "not tested: needs ...". ``days``: spans in business days, or "all" days both share.
+    """
+    table = pnl_table(pnl)
+    known = latest_known(table, table["known_on"].max())
+    options: dict[str, Any] = {"spans": tuple(days), "seed": seed}
+    results = battery.judge_table(
+        known, forecasts, tests=tests, significance=significance, simulations=simulations, **options
+    )
+    return results_table(results)
+
+
+def forecast_desks(
+    histories: Sequence[DeskHistory], models: Sequence[Model], levels: Sequence[float], workers: int, report: Progress
+) -> tuple[pd.DataFrame, pd.DataFrame]:
+    """Forecast every desk by every model: one task a desk x filter, in threads; the order of tasks changes nothing."""
+    tasks = [(history, group) for history in histories for group in groups(models)]
+    if tasks and not is_warm():
+        report("compiling the kernels: once per machine, up to a minute", 0, len(tasks))
+    parts = each(
+        lambda task: forecast_group(task[0], task[1], levels), tasks, workers, report, "forecasting desk x filter"
+    )
+    forecasts = joined([p[0] for p in parts], FORECAST_COLUMNS)
+    fits = joined([p[1] for p in parts], FIT_COLUMNS)
+    order = pd.Series({model.name: i for i, model in enumerate(models)})
+    rank = forecasts["model"].map(order)
+    forecasts = forecasts.assign(_rank=rank).sort_values(["desk", "_rank", "level", "date"], kind="stable")
+    return forecasts.drop(columns="_rank").reset_index(drop=True), fits
+
+
+def each(call: Callable[[Any], Any], tasks: Sequence[Any], workers: int, report: Progress, what: str) -> list[Any]:
+    """Return ``call`` of every task, in order, by ``workers`` threads, reporting each as it is done."""
+    found = []
+    parallel = joblib.Parallel(n_jobs=max(1, min(workers, len(tasks) or 1)), prefer="threads", return_as="generator")
+    for i, part in enumerate(parallel(joblib.delayed(call)(task) for task in tasks)):
+        report(what, i + 1, len(tasks))
+        found.append(part)
+    return found
+
+
+def _check_levels(levels: Sequence[float]) -> None:
+    for level in levels:
+        if not 0.5 < level < 1:
+            remedy = "A level is a confidence such as 0.99, never 1 or 99."
+            raise StudyError("a level must lie between 0.5 and 1", value=level, place="levels", remedy=remedy)
+    if not len(levels):
+        raise StudyError("no level is asked for", place="levels")

@@ -1,0 +1,80 @@
+"""The multiple that would have sufficed, with its intervals."""
+
+import numpy as np
+import pytest
+from scipy import stats
+
+from backtest.judging.multiples import multiples_table, order_limits, sufficient_es_multiple, sufficient_multiple
+from backtest.judging.samples import read_book
+from tests.reference.judging_tables import tables
+
+
+def test_quantile_is_the_ceil_nq_th_smallest():
+    losses = np.arange(1.0, 1001.0)
+    found = sufficient_multiple(losses, np.full(1000, 100.0), 0.975)  # 1000 * .975 is 975 despite floating point
+    assert found.estimate == 9.75
+
+
+@pytest.mark.parametrize(("n", "q"), [(250, 0.975), (500, 0.99), (2500, 0.99)])
+def test_order_limits_follow_the_definition(n, q):
+    low, high = order_limits(n, q)
+    ranks = np.arange(1, n + 1)
+    assert low == ranks[stats.binom.cdf(ranks - 1, n, q) <= 0.025].max()
+    assert high == ranks[stats.binom.cdf(ranks - 1, n, q) >= 0.975].min()
+
+
+@pytest.mark.parametrize(("q", "first"), [(0.99, 368), (0.975, 146)])
+def test_no_upper_limit_below_the_stated_length(q, first):
+    assert order_limits(first - 1, q)[1] is None
+    assert order_limits(first, q)[1] == first
+
+
+def test_coverage_of_the_order_interval():
+    rng, level, inside = np.random.default_rng(3), 0.975, 0
+    true = stats.t.ppf(level, 5) / 2.0
+    for _ in range(1000):
+        found = sufficient_multiple(rng.standard_t(5, 500), np.full(500, 2.0), level)
+        inside += found.low <= true <= found.high
+    assert inside / 1000 >= 0.95 - 3 * np.sqrt(0.05 * 0.95 / 1000)
+
+
+def test_es_multiple_is_the_exact_integral_of_the_step_quantile():
+    losses = np.array([1.0, 2.0, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0, 9.0, 10.0])
+    found = sufficient_es_multiple(losses, np.full(10, 2.0), 0.85, seed=1)
+    assert found.estimate == pytest.approx((10.0 * 1.0 + 9.0 * 0.5) / 1.5 / 2.0)
+    assert found.low <= found.estimate <= found.high
+
+
+def test_bootstrap_interval_against_a_plain_bootstrap():
+    rng = np.random.default_rng(2)
+    losses = rng.standard_t(5, 400)
+    found = sufficient_es_multiple(losses, np.full(400, 2.0), 0.95, seed=1)
+    plain = [np.sort(rng.choice(losses, 400))[-20:].mean() / 2.0 for _ in range(4000)]
+    low, high = np.quantile(plain, [0.025, 0.975])
+    assert (found.low, found.high) == pytest.approx((low, high), abs=0.05)
+
+
+def test_forecasts_that_are_not_positive_are_skipped_and_counted():
+    losses, var = np.arange(1.0, 11.0), np.where(np.arange(10) == 9, -1.0, 2.0)
+    found = sufficient_multiple(losses, var, 0.9)
+    assert (found.days, found.skipped, found.estimate) == (9, 1, 4.5)
+    none = sufficient_multiple(losses, np.zeros(10), 0.9)
+    assert (none.estimate, none.skipped) == (None, 10)
+    assert sufficient_es_multiple(losses, np.zeros(10), 0.9, 1).estimate is None
+
+
+def test_one_day():
+    found = sufficient_multiple(np.array([3.0]), np.array([2.0]), 0.99)
+    assert (found.estimate, found.high) == (1.5, None)
+    assert sufficient_es_multiple(np.array([3.0]), np.array([2.0]), 0.99, 1).estimate == 1.5
+
+
+def test_table_of_multiples_gives_money():
+    losses = {"A": np.random.default_rng(1).standard_t(5, 300)}
+    book = read_book(*tables(losses, var=2.0, es=3.0, levels=(0.975,)))
+    table = multiples_table(book, [100, "all"], seed=1)
+    assert list(table["measure"]) == ["var", "es"] * 4
+    bank = table[(table["model"] == "bank") & (table["measure"] == "var")]
+    assert bank["average"].tolist() == pytest.approx([2.2, 2.2])
+    assert bank["days"].tolist() == [100, 300]
+    assert bank["note"].iloc[0] == "no upper limit at this length"
