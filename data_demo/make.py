@@ -1,8 +1,9 @@
 """Write the demo data of the invented Larkmoor Bank: `python data_demo/make.py [FOLDER]` (default: this folder).
 
-Everything here is invented: no bank, desk, holiday or number is real. The story is designed, not found (world.py the
-truth, ledger.py the P&L, bank.py the reported model), and told by SEED. The seed is the first of 1, 2, 3 ... for which
-every point of story.py holds; `python data_demo/story.py 200` shows which points held for which share of seeds.
+Everything here is invented: no bank, desk, holiday or number is real. The story is designed, not found: world.py holds
+the truth, ledger.py the P&L, bank.py the reported model. The sizes of the effects were set by hand, looking at many
+seeds; then SEED was set to the first of 1, 2, 3 ... for which every point of story.py holds (four of the first 200 do;
+`python data_demo/story.py 200` prints how often each point does). No claim about models rests on this seed.
 The same seed writes the same bytes (Parquet: under the same versions of pyarrow and pandas).
 """
 
@@ -17,7 +18,7 @@ from bank import MEASURES, MODEL_CHANGE, report
 from ledger import FIRM, NAMES, RESTATED_DESK, Ledger, Restatement, book, restatements
 from world import DESKS, LEGACY_CLOSED, METALS_HALVED, OPENING, World, simulate
 
-SEED = 1
+SEED = 97
 YEAR = 250
 KINDS = ("hypothetical", "actual", "risk_theoretical")
 

@@ -30,7 +30,7 @@ UNIT = float(np.sqrt(1 + SKEW**2 * (CLASS_SHARE @ CLASS_VARIANCE**2 - 1)))
 """S above: the standard deviation of sqrt(V) z - SKEW (V - 1)."""
 
 ALPHA, GAMMA, BETA = 0.01, 0.06, 0.92
-STRESS_VARIANCE, OUTBREAK_VARIANCE = 18.0, 9.0
+STRESS_VARIANCE, OUTBREAK_VARIANCE = 10.0, 7.0
 DRIFT = 0.03
 SPIKE, SPIKE_SD = 4.0, 0.3
 

@@ -8,7 +8,7 @@ import pandas as pd
 
 from backtest.forecasting.filters import Filtered, apply_filter
 from backtest.forecasting.models import FilterSpec, Model
-from backtest.forecasting.tails import apply_tail
+from backtest.forecasting.tails import apply_tail, standardise
 from backtest.forecasting.windows import Plan, plan
 from backtest.records import DATE_DTYPE, FIT_COLUMNS, FORECAST_COLUMNS, PNL_KINDS
 
@@ -96,16 +96,9 @@ def _model_block(
     }
     columns |= {name: np.repeat(tailed.tail[:, i], L) for i, name in enumerate(("shape", "scale", "threshold"))}
     for kind in PNL_KINDS:
-        columns[f"pit_{kind}"] = np.repeat(tailed.pit(_standardise(realised[kind], mean, sigma)), L)
+        columns[f"pit_{kind}"] = np.repeat(tailed.pit(standardise(realised[kind], mean, sigma)), L)
     columns["status"] = np.repeat(_join(filtered.status, tailed.status), L)
     return pd.DataFrame(columns)
-
-
-def _standardise(loss: np.ndarray, mean: np.ndarray, sigma: np.ndarray) -> np.ndarray:
-    """Return (loss - mean) / sigma; where sigma is zero, an infinity of the difference's sign, or zero."""
-    gap = loss - mean
-    with np.errstate(divide="ignore", invalid="ignore"):
-        return np.where(gap == 0.0, 0.0, gap / sigma)
 
 
 def _join(first: np.ndarray, second: np.ndarray) -> np.ndarray:

@@ -36,6 +36,13 @@ GPD_WORDS = {
 }
 
 
+def standardise(loss: np.ndarray, mean: np.ndarray, sigma: np.ndarray) -> np.ndarray:
+    """Return (loss - mean) / sigma; where sigma is zero, an infinity of the difference's sign, or zero."""
+    gap = loss - mean
+    with np.errstate(divide="ignore", invalid="ignore"):
+        return np.where(gap == 0.0, 0.0, gap / sigma)
+
+
 def _empirical(residuals: np.ndarray, spec: TailSpec, levels: np.ndarray, places: np.ndarray, standard: bool) -> Tailed:
     n = len(residuals)
     quantile, shortfall = empirical_rows(residuals, levels)
@@ -46,18 +53,17 @@ def _empirical(residuals: np.ndarray, spec: TailSpec, levels: np.ndarray, places
 
 
 def _normal(residuals: np.ndarray, spec: TailSpec, levels: np.ndarray, places: np.ndarray, standard: bool) -> Tailed:
-    """Read a normal law: standard where the filter's innovations are that law, else location and scale by likelihood."""
+    """Read a normal law: standard behind a filter with normal innovations, else with fitted location and scale."""
     n = len(residuals)
     centre = np.zeros(n) if standard else residuals.mean(axis=1)
     spread = np.ones(n) if standard else residuals.std(axis=1)
     z = ndtri(levels)
     depth = np.exp(-0.5 * z * z) / np.sqrt(2 * np.pi) / (1 - levels)
     at = centre[:, None] + spread[:, None] * z
-    with np.errstate(divide="ignore", invalid="ignore"):
-        return Tailed(
-            at, centre[:, None] + spread[:, None] * depth, np.full(n, "", dtype=object), np.full((n, 3), np.nan),
-            lambda values: ndtr(np.where(values == centre, 0.0, (values - centre) / spread)),
-        )  # fmt: skip
+    return Tailed(
+        at, centre[:, None] + spread[:, None] * depth, np.full(n, "", dtype=object), np.full((n, 3), np.nan),
+        lambda values: ndtr(standardise(values, centre, spread)),
+    )  # fmt: skip
 
 
 def _gpd(residuals: np.ndarray, spec: TailSpec, levels: np.ndarray, places: np.ndarray, standard: bool) -> Tailed:

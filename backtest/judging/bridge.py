@@ -15,6 +15,7 @@ from backtest.records import BRIDGE_COLUMNS, PNL_KINDS
 STEPS = ("reported", "re-performed", "longer window", "plus filter", "plus tail")
 NO_HISTORY = "not tested: history"
 FEWEST_SHARED_DAYS = 250
+_MEASURED = ("average_var", "average_change", "score", "score_change", "low", "high")
 
 
 @dataclass(frozen=True)
@@ -47,7 +48,9 @@ def bridge_table(
     ``fewest`` shared days, or no steps: one row that says so.
     """
     rows = [row for desk in sorted(steps) for row in _desk_rows(pnl, desk, list(steps[desk]), levels, fewest, as_of)]
-    return pd.DataFrame(rows, columns=list(BRIDGE_COLUMNS))
+    table = pd.DataFrame(rows, columns=list(BRIDGE_COLUMNS))
+    whole = dict.fromkeys(("window", "days", "exceptions"), "Int64")
+    return table.astype(whole | dict.fromkeys(("level", *_MEASURED), "float64"))
 
 
 def _desk_rows(

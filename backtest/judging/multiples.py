@@ -1,25 +1,17 @@
 """How much would have sufficed: the multiple of the VaR, and of the ES, that the realised losses call for."""
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
-import pandas as pd
 from scipy.special import betainc
 
-from backtest.judging.answers import ends
 from backtest.judging.nulls import resampled_tops
-from backtest.judging.samples import Book, Sample, Span
 
 Floats = npt.NDArray[np.float64]
 
 RESAMPLES = 1999
 _ROUNDING = 1e-9
-
-MULTIPLE_COLUMNS = (
-    "desk", "model", "pnl_kind", "level", "from", "to", "days", "measure", "multiple", "low", "high", "average", "note",
-)  # fmt: skip
 
 
 @dataclass(frozen=True, slots=True)
@@ -101,32 +93,3 @@ def _tail_weights(n: int, level: float) -> Floats:
     weights = np.full(top, 1.0 / mass)
     weights[-1] = 1.0 - (top - 1) / mass
     return weights
-
-
-def multiples_table(book: Book, spans: Sequence[Span], seed: int) -> pd.DataFrame:
-    """Return the multiples of VaR and ES for every desk, model, P&L kind, level and span.
-
-    Columns MULTIPLE_COLUMNS; ``average`` is the mean forecast in money on the days used, so that (multiple - 1) times
-    average is the shortfall in money. Rows for ES only where ES is known.
-    """
-    rows = [row for desk in book.desks for sample in desk.samples(spans) for row in _rows(sample, seed)]
-    return pd.DataFrame(rows, columns=list(MULTIPLE_COLUMNS))
-
-
-def _rows(sample: Sample, seed: int) -> list[tuple[object, ...]]:
-    found = [("var", sample.var, sufficient_multiple(sample.losses, sample.var, sample.level))]
-    known = sample.on(~np.isnan(sample.es))
-    if known.days:
-        found.append(("es", known.es, sufficient_es_multiple(known.losses, known.es, sample.level, seed)))
-    return [_row(sample, *item) for item in found]
-
-
-def _row(sample: Sample, measure: str, forecast: Floats, multiple: Multiple) -> tuple[object, ...]:
-    average = float(forecast[forecast > 0].mean()) if multiple.days else None
-    notes = multiple.notes
-    if multiple.days and multiple.high is None:
-        notes = (*notes, "no upper limit at this length")
-    return (
-        sample.desk, sample.model, sample.kind, sample.level, *ends(sample.dates), multiple.days, measure,
-        multiple.estimate, multiple.low, multiple.high, average, "; ".join(notes),
-    )  # fmt: skip

@@ -44,8 +44,7 @@ def phrase(p_value: float | None, significance: float, evidence: str, could_see:
 def p_text(p_value: float) -> str:
     """Return a p-value as text whose rounding never moves it across 0.01, 0.05 or 0.1, nor to 0 or 1.
 
-    >>> p_text(0.0496), p_text(0.04999), p_text(0.00001), p_text(1.0), p_text(0.9999)
-    ('0.0496', '0.04999', 'below 0.0001', '1', 'above 0.999')
+    Below a mark stays below it: 0.04999 reads 0.04999, and 0.00001 reads "below 0.0001".
     """
     if p_value < 1e-4:
         return "below 0.0001"
@@ -53,9 +52,13 @@ def p_text(p_value: float) -> str:
         return "1" if p_value == 1.0 else "above 0.999"
     for digits in range(3, 17):
         text = f"{p_value:.{digits}g}"
-        if all((float(text) <= mark) == (p_value <= mark) for mark in (0.01, 0.05, 0.1)):
+        if all(_side(float(text), mark) == _side(p_value, mark) for mark in (0.01, 0.05, 0.1)):
             break
     return text
+
+
+def _side(p_value: float, mark: float) -> int:
+    return (p_value > mark) - (p_value < mark)
 
 
 def in_hundred(power: float) -> str:

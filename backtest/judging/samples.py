@@ -170,13 +170,16 @@ def _checked_forecasts(forecasts: pd.DataFrame) -> pd.DataFrame:
     _require(forecasts, ("date", "desk", "model", "level", "var"), "forecasts table")
     if "horizon" in forecasts:
         forecasts = forecasts[forecasts["horizon"] == 1]
-    _once(forecasts, ["date", "desk", "model", "level"], "forecasts table")
+        if len(forecasts) == 0:
+            raise DataError("no one-day forecasts", place="forecasts table, column horizon", rule="horizon 1 is judged",
+                            remedy="Hand over forecasts with horizon 1.")  # fmt: skip
     forecasts = _numbers(forecasts, ["level", *(m for m in MEASURES if m in forecasts)], "forecasts table")
     wrong = forecasts[~((forecasts["level"] > 0.5) & (forecasts["level"] < 1.0))]
     if len(wrong):
         raise DataError("a level is not between 0.5 and 1", value=wrong["level"].iloc[0],
                         place=f"forecasts table, row {wrong.index[0]}, column level",
                         remedy="A level is a confidence such as 0.99, never 1 or 99.")  # fmt: skip
+    _once(forecasts, ["date", "desk", "model", "level"], "forecasts table")
     return forecasts
 
 

@@ -1,4 +1,4 @@
-"""The multiples that would have sufficed, as results: an effect size in its own right, with no p-value to go with it."""
+"""The multiples that would have sufficed, as results: an effect size of its own, with no p-value beside it."""
 
 from collections.abc import Sequence
 

@@ -31,7 +31,7 @@ def slope(y: np.ndarray, theta: float, moments: np.ndarray) -> tuple[float, floa
     for i in range(n):
         w = 1.0 + theta * y[i]
         r = y[i] / w
-        s0 += math.log(w)
+        s0 += math.log1p(theta * y[i])
         s1 += r
         s2 += r * r
     s0, s1, s2 = s0 / n, s1 / n, s2 / n
@@ -158,7 +158,8 @@ def roll_gpd(
     """Fit a tail to the top ``k`` of each row of ``samples`` (n, m) and read quantile and shortfall at ``levels``.
 
     Returns quantile (n, L), shortfall (n, L), tail (n, 4: xi, beta, threshold, share above it) and status bits (n);
-    REFUSED rows (fewer than FEWEST excesses, or a level not beyond the threshold) hold NaN.
+    REFUSED rows (fewer than FEWEST excesses, a level not beyond the threshold, or a shape of 1 or more by both
+    estimators, so that the shortfall would be infinite) hold NaN.
     """
     n, m = samples.shape
     quantile, shortfall = np.full((n, levels.size), np.nan), np.full((n, levels.size), np.nan)
@@ -177,6 +178,9 @@ def roll_gpd(
         if not xi <= HIGHEST_SHAPE:
             xi, beta = fit_zhang_stephens(y)
             status[i] |= ZHANG_STEPHENS
+        if not xi < 1.0:
+            status[i] = REFUSED
+            continue
         tail[i, 0], tail[i, 1], tail[i, 2], tail[i, 3] = xi, beta, threshold, share
         for j in range(levels.size):
             quantile[i, j], shortfall[i, j] = quantile_and_shortfall(threshold, xi, beta, (1.0 - levels[j]) / share)

@@ -31,7 +31,8 @@ def new_past(W: int) -> Past:
 def prepare(past: Past, losses: np.ndarray, mean_kind: int, start: int, skip: int) -> bool:
     """Fill ``past`` from raw ``losses`` (W); return False where they do not vary enough to have a variance.
 
-    Losses are divided by the power of two nearest their own standard deviation, so that the P&L's unit is immaterial.
+    Losses are divided by their own standard deviation: every later comparison, cap and ridge then sees the same numbers
+    whatever the unit of the P&L (a power of two near it would leave the search path, and the tenth digit, to the unit).
     """
     W = losses.size
     average, largest = 0.0, 0.0
@@ -45,7 +46,7 @@ def prepare(past: Past, losses: np.ndarray, mean_kind: int, start: int, skip: in
     deviation = largest * math.sqrt(spread / W)
     if not (deviation > 1e-9 * largest and math.isfinite(deviation)):
         return False
-    scale = 2.0 ** math.floor(math.log2(deviation) + 0.5)
+    scale = deviation
     for t in range(W):
         past.x[t] = losses[t] / scale
     past.numbers[0] = scale

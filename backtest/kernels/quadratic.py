@@ -120,7 +120,7 @@ def multipliers(A: np.ndarray, active: np.ndarray, force: np.ndarray) -> np.ndar
     for i in range(m):
         right[i] = dot(A[index[i]], force)
         for j in range(m):
-            gram[i, j] = dot(A[index[i]], A[index[j]]) + (1e-14 if i == j else 0.0)
+            gram[i, j] = dot(A[index[i]], A[index[j]]) + (1e-10 if i == j else 0.0)
     if cholesky_solve(gram, right):
         for i in range(m):
             out[index[i]] = right[i]

@@ -54,14 +54,24 @@ def next_start(search: Search, warm: bool, deep: bool) -> int:
 
 
 @compiled
+def distinct(modes: np.ndarray, k: int, other: int) -> bool:
+    """Tell whether two ends are different optima: their next variances differ by more than a thousandth."""
+    return bool(abs(modes[k, 1] / modes[other, 1] - 1.0) > 1e-3)
+
+
+@compiled
 def best_mode(modes: np.ndarray) -> int:
-    """Return the converged mode of the highest likelihood; of ties within TIE the larger next variance; -1 if none."""
+    """Return the converged end of the highest likelihood, -1 if none.
+
+    Of different optima within TIE the one with the larger next variance; of two ends at the same optimum the first, so
+    that rounding does not choose.
+    """
     best = -1
     for k in range(modes.shape[0]):
         if modes[k, 7] <= 0.0:
             continue
         lead = modes[k, 0] - modes[best, 0] if best >= 0 else np.inf
-        if lead > TIE or (lead > -TIE and modes[k, 1] > modes[best, 1]):
+        if lead > TIE or (lead > -TIE and distinct(modes, k, best) and modes[k, 1] > modes[best, 1]):
             best = k
     return best
 
@@ -71,8 +81,7 @@ def second_variance(modes: np.ndarray, best: int) -> float:
     """Return the next variance of the best other optimum within MODE_GAP, or NaN where there is none."""
     found, value = np.nan, modes[best, 0] - MODE_GAP
     for k in range(modes.shape[0]):
-        differs = abs(modes[k, 1] / modes[best, 1] - 1.0) > 1e-3
-        if modes[k, 7] > 0.0 and differs and modes[k, 0] > value:
+        if modes[k, 7] > 0.0 and distinct(modes, k, best) and modes[k, 0] > value:
             found, value = modes[k, 1], modes[k, 0]
     return found
 

@@ -148,7 +148,7 @@ def remark_desks(desks: pd.DataFrame, pnl: pd.DataFrame, reported: pd.DataFrame,
     ]
     strangers = desks[(desks["parent"] != "") & ~desks["parent"].isin(known)]
     for parent, rows in strangers.groupby("parent", sort=True):
-        text = f"the parent {parent!r} of {len(rows)} desks is no desk of the file: its desks count as top level"
+        text = f"the parent {parent!r} is no desk of the file: desks under it, which count as top level: {len(rows)}"
         remarks.append(Remark("parent-unknown", table.name, "", "", "", len(rows), text))
     return remarks
 

@@ -20,7 +20,7 @@ def missing_days(pnl: pd.DataFrame, desks: pd.DataFrame, calendar: np.ndarray, s
         expected = days[(days >= start.to_datetime64()) & (days <= end.to_datetime64())]
         absent = np.setdiff1d(expected, dates.to_numpy())
         parts.append(pd.DataFrame({"date": absent, "desk": desk}))
-    text = "{count} business days between {first} and {last} have no P&L row"
+    text = "business days without a P&L row: {count}, first {first}, last {last}"
     return per_desk("missing-days", source, pd.concat(parts, ignore_index=True), text)
 
 
@@ -30,7 +30,7 @@ def empty_values(pnl: pd.DataFrame, as_of: np.datetime64, source: str) -> list[R
     remarks = []
     for kind in PNL_VALUES:
         if kind in latest:
-            text = f"{{count}} rows carry no {kind} P&L"
+            text = f"rows without a value of {kind} P&L: {{count}}"
             remarks += per_desk(f"empty-{kind.replace('_', '-')}", source, latest[latest[kind].isna()], text)
     return remarks
 
@@ -40,26 +40,26 @@ def weekends(pnl: pd.DataFrame, reported: pd.DataFrame, sources: tuple[str, str]
     remarks = []
     for frame, source in zip((pnl, reported), sources, strict=True):
         days = frame.drop_duplicates(["desk", "date"])
-        at_weekend = days[days["date"].dt.dayofweek >= 5]
-        remarks += per_desk("weekend", source, at_weekend, "{count} days of {first} to {last} are Saturdays or Sundays")
+        at_weekend = days[days["date"].dt.day_of_week >= 5]
+        remarks += per_desk("weekend", source, at_weekend, "dates on a Saturday or Sunday: {count}")
     return remarks
 
 
 def off_calendar(frame: pd.DataFrame, days: np.ndarray, rule: str, source: str) -> list[Remark]:
     """Remark on dates that the supplied calendar does not have: such days are no target days."""
     unknown = frame[~frame["date"].isin(days.astype(DATE_DTYPE))].drop_duplicates(["desk", "date"])
-    return per_desk(rule, source, unknown, "{count} dates are no business day of the calendar")
+    return per_desk(rule, source, unknown, "dates that are no business day of the calendar: {count}")
 
 
 def outside_life(pnl: pd.DataFrame, desks: pd.DataFrame, source: str) -> list[Remark]:
     """Remark on P&L before a desk's valid_from or after its valid_to."""
     rows = pnl.drop_duplicates(["desk", "date"]).merge(desks[["desk", "valid_from", "valid_to"]], on="desk")
     outside = rows[(rows["date"] < rows["valid_from"]) | (rows["date"] > rows["valid_to"])]
-    return per_desk("outside-validity", source, outside, "{count} P&L days lie outside the desk's valid dates")
+    return per_desk("outside-validity", source, outside, "P&L days outside the desk's valid dates: {count}")
 
 
 def one_side_only(pnl: pd.DataFrame, reported: pd.DataFrame, as_of: np.datetime64, source: str) -> list[Remark]:
-    """Remark on reported days without P&L and, from a desk's first forecast on, P&L days without a VaR."""
+    """Remark on reported days without P&L and, from the first forecast of a model x level on, P&L days without."""
     if reported.empty:
         return []
     rows = latest_known(pnl, as_of)
@@ -67,20 +67,18 @@ def one_side_only(pnl: pd.DataFrame, reported: pd.DataFrame, as_of: np.datetime6
     with_value = rows.loc[rows[values].notna().any(axis=1), ["desk", "date"]]
     days = reported[["desk", "date"]]
     lonely = days[~_among(days, with_value)].drop_duplicates()
-    start = with_value["desk"].map(days.groupby("desk", sort=True)["date"].min())
-    expected = with_value[(with_value["date"] >= start).to_numpy()]
-    gaps = [
-        expected[expected["desk"].isin(series["desk"].unique()) & ~_among(expected, series)]
-        for _, series in reported.groupby(["model", "level"], sort=True)
-    ]
+    gaps = []
+    for _, series in reported.groupby(["model", "level"], sort=True):
+        start = with_value["desk"].map(series.groupby("desk", sort=True)["date"].min())
+        expected = with_value[(with_value["date"] >= start).to_numpy()]
+        gaps.append(expected[~_among(expected, series)])
     silent = pd.concat(gaps).drop_duplicates()
-    text = "{count} P&L days from the first forecast on lack a reported VaR of a model and level reported elsewhere"
+    unjudged = with_value[~with_value["desk"].isin(reported["desk"].unique())]
+    text = "P&L days without a reported VaR of a model and level that had begun by then: {count}"
     return [
-        *per_desk("reported-without-pnl", source, lonely, "{count} days with a reported VaR have no P&L"),
+        *per_desk("reported-without-pnl", source, lonely, "days with a reported VaR and no P&L: {count}"),
         *per_desk("pnl-without-reported", source, silent, text),
-        *per_desk(
-            "nothing-reported", source, with_value[start.isna()], "{count} P&L days and no reported forecast at all"
-        ),
+        *per_desk("nothing-reported", source, unjudged, "no reported forecast at all; P&L days: {count}"),
     ]
 
 
@@ -103,7 +101,7 @@ def restated(pnl: pd.DataFrame, as_of: np.datetime64, source: str) -> list[Remar
     for desk, rows in last.groupby("desk", sort=True):
         largest = rows.sort_values(["size", "date"], ascending=[False, True], kind="stable").iloc[0]
         change_text = f"{largest['size']:,.6g} on {largest['date']:%Y-%m-%d}"
-        text = f"{len(rows)} days were restated; the largest change is {change_text}"
+        text = f"restated days: {len(rows)}; the largest change is {change_text}"
         remarks.append(
             desk_remark("restated", source, str(desk), rows["date"].min(), rows["date"].max(), len(rows), text)
         )

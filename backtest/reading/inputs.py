@@ -29,15 +29,16 @@ from backtest.reading.desks import (
 from backtest.reading.history import refuse_nothing_to_do, short_histories
 from backtest.reading.pnl import read_pnl
 from backtest.reading.remarks import in_order, per_desk
-from backtest.reading.reported import COLUMNS, read_reported, to_target_dates
+from backtest.reading.reported import COLUMNS, empty_reported, read_reported, to_target_dates
 from backtest.reading.shift import shifted
 from backtest.reading.stretches import stale_pnl, stale_var
 from backtest.reading.tables import Table, layout_of, read_table
 from backtest.reading.totals import not_adding_up
-from backtest.records import DATE_DTYPE, Inputs, Remark, latest_known
+from backtest.records import Inputs, Remark, latest_known
 from backtest.study import Study
 
 ROLES = ("pnl", "reported", "desks", "changes", "calendar")
+ROWS = {"pnl": "P&L rows", "reported": "reported forecasts", "changes": "changes"}
 
 
 @dataclass
@@ -124,8 +125,7 @@ def _refuse_unread_mapping(study: Study) -> None:
 
 def _reported(gathered: _Gathered) -> pd.DataFrame:
     if "reported" not in gathered.tables:
-        empty = pd.DataFrame({column: [] for column in COLUMNS}).astype(dict.fromkeys(COLUMNS, "float64"))
-        return empty.astype({"date": DATE_DTYPE, "desk": "str", "model": "str"}).assign(line=0)
+        return empty_reported().assign(line=0)
     frame, used, remarks = read_reported(gathered.tables["reported"], gathered.study)
     gathered.use("reported", used)
     gathered.remarks += remarks
@@ -170,11 +170,12 @@ def _up_to(
     gathered: _Gathered, as_of: np.datetime64, pnl: pd.DataFrame, reported: pd.DataFrame, changes: pd.DataFrame
 ) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
     """Leave out what lies after the cut-off, each with a remark."""
-    after = f"after the cut-off {as_of} and left out"
+    after = f"after the cut-off {as_of}, left out"
     leave_out, tables = gathered.leave_out, {"pnl": pnl, "reported": reported, "changes": changes}
     for role, frame in tables.items():
-        tables[role] = leave_out(frame, frame["date"] > as_of, "after-cut-off", role, f"{{count}} rows are {after}")
-    pnl, text = tables["pnl"], f"{{count}} values became known {after}"
+        text = f"{ROWS[role]} {after}: {{count}}"
+        tables[role] = leave_out(frame, frame["date"] > as_of, "after-cut-off", role, text)
+    pnl, text = tables["pnl"], f"P&L values that became known {after}: {{count}}"
     pnl = leave_out(pnl, pnl["known_on"] > as_of, "known-after-cut-off", "pnl", text)
     if pnl.empty:
         remedy = "Move review.as_of."
@@ -210,7 +211,7 @@ def _unnamed(gathered: _Gathered) -> list[Remark]:
     for table in {table.name: table for table in gathered.tables.values()}.values():
         rest = [column for column in sorted(table.columns) if column not in gathered.used[table.name]]
         if rest:
-            text = f"{len(rest)} columns are not named by the study and not read: {', '.join(rest)}"
+            text = f"columns that the study does not name, not read ({len(rest)}): {', '.join(rest)}"
             remarks.append(Remark("unnamed-columns", table.name, "", "", "", len(rest), text))
     return remarks
 

@@ -38,11 +38,17 @@ def read_reported(table: Table, study: Study) -> tuple[pd.DataFrame, set[str], l
     refuse_repeated(table, frame, identity, has_known_on="known_on" in keys)
     used = {*keys.values(), *(part[1] for part in parts), *(part[2] for part in parts if part[2])}
     empty = frame["var"].isna()
-    remarks = per_desk("reported-empty", table.name, frame[empty], "{count} rows carry no VaR and are left out")
+    remarks = per_desk("reported-empty", table.name, frame[empty], "rows without a VaR, left out: {count}")
     frame, restated = _first_known(frame[~empty], table.name)
     _refuse_nothing_left(frame, table.name)
     _refuse_subject(frame, study)
     return frame, used, [*remarks, *restated, *bad_rows(frame, table.name, study)]
+
+
+def empty_reported() -> pd.DataFrame:
+    """Return a reported table without rows, for a study without that file."""
+    empty = pd.DataFrame({column: [] for column in COLUMNS}).astype(dict.fromkeys(COLUMNS, "float64"))
+    return empty.astype({"date": DATE_DTYPE, "desk": "str", "model": "str"})
 
 
 def _keys(table: Table, columns: Columns, study: Study) -> dict[str, str]:
@@ -119,7 +125,7 @@ def _first_known(frame: pd.DataFrame, name: str) -> tuple[pd.DataFrame, list[Rem
         return kept, []
     pairs = frame[again].merge(kept, on=keys, suffixes=("", "_first"))
     changed = pairs[(pairs["var"] != pairs["var_first"]) | (pairs["es"].fillna(-1.0) != pairs["es_first"].fillna(-1.0))]
-    text = "{count} forecasts were changed later; the first known stands, since it was the forecast"
+    text = "forecasts changed later: {count}; the first known stands, since it was the forecast"
     return kept, per_desk("reported-restated", name, changed, text)
 
 
@@ -149,8 +155,8 @@ def bad_rows(frame: pd.DataFrame, name: str, study: Study) -> list[Remark]:
     _refuse_share("ES is below VaR", int(below.sum()), int(frame["es"].notna().sum()), name, "data.columns.es")
     stays = "they stay as reported and are judged as they stand"
     return [
-        *per_desk("var-negative", name, frame[negative], f"VaR is negative on {{count}} rows; {stays}"),
-        *per_desk("es-below-var", name, frame[below], f"ES is below VaR on {{count}} rows; {stays}"),
+        *per_desk("var-negative", name, frame[negative], f"rows with a negative VaR: {{count}}; {stays}"),
+        *per_desk("es-below-var", name, frame[below], f"rows with ES below VaR: {{count}}; {stays}"),
     ]
 
 
@@ -180,7 +186,7 @@ def to_target_dates(
     beyond = ~off & (at + 1 >= len(days))
     moved = frame[~off & ~beyond].copy()
     moved["date"] = days[at[~off & ~beyond] + 1].astype(DATE_DTYPE)
-    off_text = "{count} forecasts stand on no business day of the calendar and are left out"
-    beyond_text = "{count} forecasts are for a day beyond the last business day known and are left out"
+    off_text = "forecasts that stand on no business day of the calendar, left out: {count}"
+    beyond_text = "forecasts for a day beyond the last business day known, left out: {count}"
     remarks = per_desk("reported-off-calendar", name, frame[off], off_text)
     return moved, remarks + per_desk("reported-beyond", name, frame[beyond], beyond_text)

@@ -29,8 +29,9 @@ def lag_correlations(pnl: np.ndarray, var: np.ndarray) -> tuple[list[float], int
     Correlations are NaN where a side does not vary or no days are shared.
     """
     usable = np.where(var > 0, var, np.nan)
-    change = usable[1:] / usable[:-1] - 1
-    size = np.abs(pnl) / usable
+    with np.errstate(over="ignore"):  # a VaR next to zero gives infinite ratios, which rank as the largest
+        change = usable[1:] / usable[:-1] - 1
+        size = np.abs(pnl) / usable
     rows = pd.DataFrame({"change": change[1:], **{str(k): size[2 - k : len(size) - k] for k in range(3)}}).dropna()
     ranks = rows.rank().to_numpy()
     return [_correlation(ranks[:, 0], ranks[:, 1 + k]) for k in range(3)], len(rows)

@@ -70,7 +70,7 @@ def _text(runs: pd.DataFrame, what: str, origin: str) -> str:
     zeros = runs.loc[runs["value"] == 0, "days"].sum()
     series = f", model {longest['model']!r} at {longest['level']:g}" if "model" in runs else ""
     return (
-        f"{what} does not change in {len(runs)} stretches, {runs['days'].sum()} days, {zeros} of them at zero; the "
+        f"unchanged {what}: stretches {len(runs)}, days {runs['days'].sum()}, of these at zero {zeros}; the "
         f"longest is {longest['days']} days from {longest['first']:%Y-%m-%d} to {longest['last']:%Y-%m-%d} at "
         f"{longest['value']:,.6g}{series} ({origin})"
     )

@@ -18,9 +18,11 @@ from backtest.records import DATE_DTYPE
 
 _GUARDED = tuple("=+-@\t\r'")
 _NUMBER_COLUMNS = frozenset(
-    ("level", "days", "exceptions", "statistic", "p_value", "estimate", "low", "high", "could_see", "window", "score")
-    + ("average_var", "average_change", "score_change", "count")
-)
+    (
+        "level", "days", "exceptions", "statistic", "p_value", "estimate", "low", "high", "could_see", "window",
+        "average_var", "average_change", "score", "score_change", "count",
+    )
+)  # fmt: skip
 """Columns that hold numbers even where a table has none to show."""
 
 

@@ -7,6 +7,7 @@ import hashlib
 import json
 import math
 import platform
+from collections import Counter
 from collections.abc import Mapping, Sequence
 from datetime import UTC, datetime
 from importlib.metadata import PackageNotFoundError, version
@@ -77,11 +78,11 @@ def count_fallbacks(forecasts: pd.DataFrame) -> dict[str, object]:
     own = forecasts[forecasts["status"] != REPORTED_STATUS]
     days = own.drop_duplicates(["date", "desk", "model"])
     fell = own[is_fallback(own["status"])].drop_duplicates(["date", "desk", "model"])
-    made = days.groupby(["model", "desk"], observed=True).size()
-    lost = fell.groupby(["model", "desk"], observed=True).size()
+    made = Counter(zip(days["model"], days["desk"], strict=True))
+    lost = Counter(zip(fell["model"], fell["desk"], strict=True))
     rows = [
-        {"model": m, "desk": d, "forecasts": int(made[m, d]), "fallbacks": int(n), "share": int(n) / int(made[m, d])}
-        for (m, d), n in lost.items()
+        {"model": m, "desk": d, "forecasts": made[m, d], "fallbacks": n, "share": n / made[m, d]}
+        for (m, d), n in sorted(lost.items())
     ]
     statuses = own.drop_duplicates(["date", "desk", "model", "status"])["status"].value_counts()
     by_status = {str(status): int(n) for status, n in sorted(statuses.items())}

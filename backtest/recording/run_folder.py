@@ -81,7 +81,7 @@ def is_run_folder(folder: Path) -> bool:
 def write_document(folder: Path, name: str, text: str) -> Path:
     """Put a rendered document into a run folder, whole or not at all; return its path.
 
-    Raises RecordError where ``folder`` is no run folder, ``name`` is a path or a file of the record, or the disk refuses.
+    Raises RecordError where ``folder`` is no run folder, ``name`` is a path or a file of the record, or the disk fails.
     """
     if Path(name).name != name or name in {MANIFEST, *TABLES.values()}:
         raise RecordError("a document needs a plain file name of its own", value=name, place=str(folder))
@@ -139,7 +139,7 @@ def _read_table(path: Path, listed: dict[str, Any]) -> pd.DataFrame:
     if found != listed.get("sha256"):
         what = "file is not the one that the run wrote (its SHA-256 differs from the manifest's)"
         raise RecordError(what, place=str(path), remedy=_RUN_AGAIN)
-    return read_csv(path, listed["columns"]) if path.suffix == ".csv" else pd.read_parquet(path)
+    return read_csv(path, dict(listed["columns"])) if path.suffix == ".csv" else pd.read_parquet(path)
 
 
 @contextmanager
@@ -163,7 +163,7 @@ def _fill(record: Record, folder: Path) -> None:
         frame = getattr(record, table)
         entry: dict[str, object] = {"rows": len(frame)}
         if name.endswith(".csv"):
-            entry["columns"] = write_csv(folder / name, frame)
+            entry["columns"] = [*write_csv(folder / name, frame).items()]  # a list: JSON keys are sorted, columns not
         else:
             frame.to_parquet(folder / name, index=False)
         _flush(folder / name)

@@ -106,7 +106,7 @@ def when(book: Book, scope: Scope) -> When:
         first=str(book.business_days[first]) if inside else "",
         last=str(book.business_days[last]) if inside else "",
         p=given(row["p_value"]) if row else None,
-        rejected=bool(row) and row["decision"] == "rejected",
+        rejected=row is not None and row["decision"] == "rejected",
         note=text(row["phrase"]) if row else "not tested: the test was not asked for",
     )
 
@@ -139,8 +139,8 @@ def _sufficient(book: Book, scope: Scope, measure: str, test: str, values: "pd.S
     average = given(values[values > 0].mean())
     if row is None:
         return Sufficient(measure, None, None, None, average, "not tested: the multiple was not asked for")
-    numbers = [given(row[c]) for c in ("estimate", "low", "high")]
-    return Sufficient(measure, *numbers, average, text(row["phrase"]) or text(row["note"]))
+    value, low, high = (given(row[c]) for c in ("estimate", "low", "high"))
+    return Sufficient(measure, value, low, high, average, text(row["phrase"]) or text(row["note"]))
 
 
 def bridges(book: Book, desk: str) -> list[Bridge]:
@@ -190,8 +190,8 @@ def power(book: Book) -> Power | None:
     kept = book.mapping("power")
     if not kept or given(kept.get("power")) is None:
         return None
-    shares = [float(kept[k]) for k in ("level", "nominal_rate", "true_rate")]
-    return Power(*shares, int(kept["days"]), float(kept["power"]))
+    level, nominal, true = (float(kept[k]) for k in ("level", "nominal_rate", "true_rate"))
+    return Power(level, nominal, true, int(kept["days"]), float(kept["power"]))
 
 
 def person(book: Book, scope: Scope) -> Person:

@@ -14,7 +14,7 @@ from backtest.reporting.book import Book
 DAYS_SHOWN = 500
 """Business days in a figure: more would neither print nor keep the page small."""
 _INK, _GREY, _PALE = "#1d2228", "#6d7680", "#b4bbc2"
-_SETTINGS = {
+_SETTINGS: dict[Any, Any] = {
     "svg.fonttype": "none",
     "text.parse_math": False,
     "font.family": "sans-serif",
@@ -75,7 +75,8 @@ def caption(figure: LossFigure, desk: str) -> str:
     latest = f"the latest {days}" if figure.cut else days
     marks = {"hypothetical": "filled dots", "actual": "open rings"}
     counts = [f"{marks[k]} losses beyond {models[0]} on {k} P&L ({int(e.sum())})" for k, e in figure.exceptions.items()]
-    head = f"{say.name(desk)}: daily losses on {next(iter(figure.losses), 'no')} P&L (bars) against one-day {say.level(figure.level)} VaR"
+    kind, level = next(iter(figure.losses), "no"), say.level(figure.level)
+    head = f"{say.name(desk)}: daily losses on {kind} P&L (bars) against one-day {level} VaR"
     return f"{head}; {latest}. {lines[0].upper()}{lines[1:]}; {'; '.join(counts)}. Days with a profit have no bar."
 
 
@@ -87,8 +88,8 @@ def draw(figure: LossFigure, salt: str) -> str:
     from matplotlib.figure import Figure
 
     with rc_context({**_SETTINGS, "svg.hashsalt": salt}):
-        canvas = FigureCanvasSVG(Figure(figsize=(7.4, 2.7), layout="constrained"))
-        _draw_losses(canvas.figure.add_subplot(), figure)
+        canvas = FigureCanvasSVG(Figure(figsize=(7.4, 2.7)))
+        _draw_losses(canvas.figure.add_axes((0.075, 0.17, 0.815, 0.8)), figure)
         return _svg_text(canvas)
 
 
@@ -140,9 +141,11 @@ def _label_lines(axes: Any, figure: LossFigure, scale: float) -> None:
 
 
 def _svg_text(canvas: Any) -> str:
-    """Return the drawing without the head of a file of its own, and without a style that would leak into the page."""
+    """Return the drawing as part of a page: no head of a file, no style that would leak, no id that nothing needs."""
     file = StringIO()
     canvas.print_svg(file, metadata={"Date": None, "Creator": None, "Format": None, "Type": None})
     text = file.getvalue()
     text = text[text.index("<svg") :]
-    return re.sub(r"<style.*?</style>|<!--.*?-->|<metadata>.*?</metadata>", "", text, flags=re.DOTALL).strip()
+    text = re.sub(r"<style.*?</style>|<!--.*?-->|<metadata>.*?</metadata>", "", text, flags=re.DOTALL).strip()
+    needed = set(re.findall(r"#([\w-]+)", text))
+    return re.sub(r' id="([^"]*)"', lambda m: m[0] if m[1] in needed else "", text)

@@ -53,7 +53,9 @@ def about(scope: Scope) -> str:
     who = f"{desk}, the whole firm" if scope.is_firm else desk
     chosen = ""
     if not scope.is_firm and scope.desks > 1:
-        chosen = f", of {scope.desks} desks the one whose count lies furthest above its expectation; no firm-wide row was judged"
+        chosen = (
+            f", of {scope.desks} desks the one whose count is furthest above its expectation; no firm row was judged"
+        )
     what = f"the reported model {model}" if scope.is_subject else f"no reported model was supplied, challenger {model}"
     return f"{who}{chosen}; {what}"
 
@@ -68,8 +70,8 @@ def how_often(facts: Often) -> str:
     if not scope.is_subject:
         each = ", ".join(f"{say.name(c.name)} {say.whole(c.exceptions)}" for c in facts.counts)
         return (
-            f"{say.name(scope.desk)}: no reported VaR was supplied. In {say.whole(days)} days on {scope.kind} P&L losses exceeded "
-            f"the challengers' {level} VaR on this many days: {each}; {expectation}."
+            f"{say.name(scope.desk)}: no reported VaR was supplied. In {say.whole(days)} days on {scope.kind} P&L "
+            f"losses exceeded the challengers' {level} VaR on this many days: {each}; {expectation}."
         )
     counts = " and ".join(f"on {_rate(c, 1 - scope.count_level)} on {c.name} P&L" for c in facts.counts)
     parts = [
@@ -129,10 +131,10 @@ def when_they_fell(facts: When) -> str:
     if facts.exceptions < 4:
         few = say.plural(facts.exceptions, "loss", "losses")
         return f"{few[0].upper()}{few[1:]} exceeded {where}: too few to speak of clusters. {independence}"
-    even = facts.inside * facts.days / facts.exceptions
+    even = say.whole(round(facts.inside * facts.days / facts.exceptions))
     return (
-        f"{facts.inside} of the {facts.exceptions} losses beyond {where} fell within {say.whole(facts.width)} business days, "
-        f"{facts.first} to {facts.last}; evenly spread they would take about {say.whole(round(even))}. {independence}"
+        f"{facts.inside} of the {facts.exceptions} losses beyond {where} fell within {say.whole(facts.width)} business "
+        f"days, {facts.first} to {facts.last}; evenly spread they would take about {even}. {independence}"
     )
 
 
@@ -140,7 +142,8 @@ def _independence(facts: When) -> str:
     if facts.p is None:
         return f"Independence: {facts.note or 'not tested'}."
     verb = "is rejected" if facts.rejected else "is not rejected, which does not show it"
-    return f"Independence from one day to the next {verb} (Christoffersen, {say.p_value(facts.p, facts.scope.significance)})."
+    p = say.p_value(facts.p, facts.scope.significance)
+    return f"Independence from one day to the next {verb} (Christoffersen, {p})."
 
 
 def by_how_much(facts: Size) -> str:
@@ -174,7 +177,7 @@ def _holds_one(facts: Sufficient) -> str:
     apart = (facts.low is not None and facts.low > 1) or (facts.high is not None and facts.high < 1)
     if apart or (facts.low is None and facts.high is None):
         return ""
-    return "; the interval holds 1, so at this length it cannot be told from the size reported"
+    return "; the interval holds 1, the size reported"
 
 
 def why(bridge: Bridge | None) -> str:
@@ -222,14 +225,15 @@ def unseen(facts: Power | None) -> str:
         return f"The power of the count was not computed. {CAPITAL_ES}"
     return (
         f"A {say.level(facts.level)} VaR whose true coverage is {say.level(1 - facts.true_rate)} is caught in "
-        f"{say.in_hundred(facts.power)} reviews of {say.whole(facts.days)} days (one-sided exact binomial at 5%, days independent). "
-        f"{CAPITAL_ES}"
+        f"{say.in_hundred(facts.power)} reviews of {say.whole(facts.days)} days (one-sided exact binomial at 5%, days "
+        f"independent). {CAPITAL_ES}"
     )
 
 
 def needs_person(facts: Person) -> str:
     """Say what a person has to look at, decide or explain."""
-    fell = f"{say.whole(facts.fallbacks) if facts.fallbacks else 'None'} of {say.plural(facts.forecasts, 'forecast')} fell back on a stated substitute"
+    some = say.whole(facts.fallbacks) if facts.fallbacks else "None"
+    fell = f"{some} of {say.plural(facts.forecasts, 'forecast')} fell back on a stated substitute"
     if not facts.forecasts:
         fell = "No challenger was forecast"
     log = say.plural(facts.exceptions, "desk-day") + f" with an exception since {facts.since} to explain"

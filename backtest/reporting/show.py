@@ -40,21 +40,26 @@ def _day(date: str | dt.date | np.datetime64) -> np.datetime64:
 
 
 def _pnl_lines(losses: pd.DataFrame, currency: str) -> list[str]:
-    names = [c for c in losses.columns if c not in ("date", "desk", "known_on", "currency", "flag")]
+    names = [str(c) for c in losses.columns if c not in ("date", "desk", "known_on", "currency", "flag")]
     lines = []
     for name in names:
         value = given(losses[name].iloc[0]) if len(losses) else None
+        if value is None and name.startswith("first_known"):  # recorded only where a day was restated
+            continue
         shown = "not known" if value is None else f"{currency} {say.amount(value)}"
-        lines.append(f"  P&L {str(name).replace('_', ' ')}: {shown}")
+        lines.append(f"  P&L {name.replace('_', ' ')}: {shown}")
     return lines or ["  P&L: not known"]
 
 
-_WIDTHS = (24, 6, 10, 14, 14, 22)
+_WIDTHS = (20, 6, 10, 13, 13, 12, 14)
+"""Widths of the columns, two blanks between them: 100 in all."""
 
 
 def _forecast_lines(rows: pd.DataFrame, losses: pd.DataFrame) -> list[str]:
-    head = ("model", "level", "origin", "VaR", "ES", "exception")
-    return [_line(head, "status")] + [_line(_cells(r, losses), text(r["status"])) for _, r in _ordered(rows).iterrows()]
+    lines = _lines(("model", "level", "origin", "VaR", "ES", "exception", "status"))
+    for _, row in _ordered(rows).iterrows():
+        lines += _lines((*_cells(row, losses), text(row["status"])))
+    return lines
 
 
 def _ordered(rows: pd.DataFrame) -> pd.DataFrame:
@@ -73,12 +78,14 @@ def _exception(var: float | None, losses: pd.DataFrame) -> str:
     if var is None or not known:
         return "not tested"
     hit = [k for k, v in known.items() if -v > var]
-    return "none" if not hit else " and ".join(hit)
+    return "none" if not hit else hit[0] if len(hit) == 1 else "both"
 
 
-def _line(cells: tuple[str, ...], status: str) -> str:
-    fitted = [c if len(c) <= w else c[: w - 1] + "…" for c, w in zip(cells, _WIDTHS, strict=True)]
-    left = [
-        f"{c:<{w}}" if i in (0, 2, 5) else f"{c:>{w}}" for i, (c, w) in enumerate(zip(fitted, _WIDTHS, strict=True))
-    ]
-    return f"{'  '.join(left)}  {status}".rstrip()
+def _lines(cells: tuple[str, ...]) -> list[str]:
+    """Return a row as a line; a model name or a status that is too long gets a line of its own, before or after it."""
+    before = [cells[0]] if len(cells[0]) > _WIDTHS[0] else []
+    after = [f"    status: {cells[-1]}"] if len(cells[-1]) > _WIDTHS[-1] else []
+    fitted = ("" if before else cells[0], *cells[1:-1], "" if after else cells[-1])
+    right = (1, 3, 4)
+    padded = [f"{c:>{w}}" if i in right else f"{c:<{w}}" for i, (c, w) in enumerate(zip(fitted, _WIDTHS, strict=True))]
+    return [*before, "  ".join(padded).rstrip(), *after]

@@ -1,16 +1,11 @@
-"""Tables of the page as ready strings: results, challengers, bridge, exceptions, remarks."""
+"""Tables of the page as ready strings: results, challengers, bridge."""
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
-import pandas as pd
-
-from backtest.records import PNL_KINDS
 from backtest.reporting import wording as say
 from backtest.reporting.book import BY_RULE, Book, Row, Span, given, text
 from backtest.reporting.facts import Bridge, Step
-
-EXCEPTIONS_SHOWN = 40
 
 
 @dataclass(frozen=True)
@@ -38,20 +33,20 @@ def table(
 
 TESTS = {
     "binomial": ("Exact binomial", "share"),
-    "kupiec": ("Kupiec, proportion of failures", "share"),
+    "kupiec": ("Kupiec, share of failures", "share"),
     "christoffersen-independence": ("Christoffersen, independence", "points"),
-    "christoffersen-coverage": ("Christoffersen, conditional coverage", "points"),
+    "christoffersen-coverage": ("Christoffersen, coverage", "points"),
     "mcneil-frey": ("McNeil and Frey, ES residuals", "multiple"),
-    "acerbi-szekely-2": ("Acerbi and Szekely, second statistic", "multiple"),
-    "diebold-mariano": ("Diebold and Mariano, score difference", "number"),
+    "acerbi-szekely-2": ("Acerbi and Szekely, statistic 2", "multiple"),
+    "diebold-mariano": ("Diebold and Mariano, scores", "number"),
     "basel-zone": ("Zone by rule", "multiplier"),
-    "sufficient-var-multiple": ("VaR multiple that would have sufficed", "multiple"),
-    "sufficient-es-multiple": ("ES multiple that would have sufficed", "multiple"),
+    "sufficient-var-multiple": ("sufficient multiple of VaR", "multiple"),
+    "sufficient-es-multiple": ("sufficient multiple of ES", "multiple"),
 }
 """Readable name of a test and the unit of its estimate; a test that is not listed shows its key and a plain number."""
-_UNITS = {
+_UNITS: dict[str, Callable[[float], str]] = {
     "share": say.percent,
-    "points": lambda value: f"{say.number(value, 3)} points",
+    "points": lambda value: f"{say.points(value)} points",
     "number": say.number,
     "multiple": lambda value: f"{say.multiple(value)} times",
     "multiplier": say.multiple,
@@ -77,30 +72,54 @@ def span_words(span: Span) -> str:
     return f"{say.plural(span.days, 'day')}, {span.first} to {span.last}"
 
 
-RESULT_HEADER = ("Level", "Question", "Test", "Days", "Exceptions (expected)", "Statistic", "p", "Law", "Estimate [95%]", "Answer")  # fmt: skip
+RESULT_HEADER = (
+    "Level", "Question", "Test", "Days", "Exceptions (expected)", "Statistic", "p", "Law", "Estimate [95%]", "Answer",
+)  # fmt: skip
 _RESULT_FIGURES = ("Level", "Days", "Exceptions (expected)", "Statistic", "p")
 
 
 def result_tables(book: Book, desk: str, model: str) -> tuple[Table, ...]:
-    """Return the results of one desk's model: a table for each span and P&L kind, the main span first, the rule last."""
+    """Return the results of one desk's model: a table a span and P&L kind, the main span first, the rule last."""
     main, tables = book.main_span(desk, model), []
     spans = sorted(book.spans(desk, model), key=lambda s: s != main)
     for span in [s for i, s in enumerate(spans) if not any(_same(s, t) for t in spans[:i])]:
         for kind in book.kinds(desk, model):
             rows = [r for r in book.results(desk, model, pnl_kind=kind, place=span.place) if r["question"] != BY_RULE]
-            tables.append(_results(book, rows, f"{model}, {kind} P&L, {span_words(span)}"))
+            if rows:
+                own = max(rows, key=lambda r: r["days"])
+                days = span_words(Span(span.place, own["from"], own["to"], own["days"]))
+                notes = _notes(rows) if span == main else "The notes on these results stand in results.csv."
+                tables.append(_results(book, rows, f"{say.name(model)}, {kind} P&L, {days}", notes))
     rule = book.results(desk, model, question=BY_RULE)
-    return tuple(tables + [_results(book, rule, f"{model}, by rule")] * bool(rule))
+    return tuple(tables + [_results(book, rule, f"{say.name(model)}, by rule", _notes(rule))] * bool(rule))
 
 
 def _same(one: Span, other: Span) -> bool:
     return (one.first, one.last, one.days) == (other.first, other.last, other.days)
 
 
-def _results(book: Book, rows: list[Row], caption: str) -> Table:
+def _results(book: Book, rows: list[Row], caption: str, notes: str) -> Table:
     ordered = sorted(rows, key=lambda r: r["level"])
-    notes = dict.fromkeys(f"{_name(r)}, {say.level(r['level'])}: {text(r['note'])}" for r in ordered if text(r["note"]))
-    return table(caption, RESULT_HEADER, [_result(r, book) for r in ordered], _RESULT_FIGURES, ". ".join(notes))
+    return table(caption, RESULT_HEADER, [_result(r, book) for r in ordered], _RESULT_FIGURES, notes)
+
+
+def _notes(rows: list[Row]) -> str:
+    """Return the notes of results, test by test; a part that is not said of every level names its levels."""
+    levels: dict[str, set[float]] = {}
+    parts: dict[str, dict[str, set[float]]] = {}
+    for row in sorted(rows, key=lambda r: r["level"]):
+        levels.setdefault(_name(row), set()).add(row["level"])
+        for part in filter(None, text(row["note"]).split("; ")):
+            parts.setdefault(_name(row), {}).setdefault(part, set()).add(row["level"])
+    said = []
+    for name, found in parts.items():
+        words = [p if at == levels[name] else f"at {_levels(at)} {p}" for p, at in found.items()]
+        said.append(f"{name}: {'; '.join(words)}.")
+    return " ".join(said)
+
+
+def _levels(found: set[float]) -> str:
+    return say.listed([say.level(level) for level in sorted(found)])
 
 
 def _name(row: Row) -> str:
@@ -149,12 +168,15 @@ _COMPACT = (
     ("mcneil-frey", "McNeil-Frey p"),
     ("acerbi-szekely-2", "Acerbi-Szekely p"),
 )
-_COMPACT_HEADER = ("Model", "Level", "Days", "Exceptions (expected)", *(n for _, n in _COMPACT), "VaR multiple [95%]", "Score difference [95%], p")  # fmt: skip
+_COMPACT_HEADER = (
+    "Model", "Level", "Days", "Exceptions (expected)", *(name for _, name in _COMPACT), "VaR multiple [95%]",
+    "Score beside the reference [95%]",
+)  # fmt: skip
 
 
 def challenger_tables(book: Book, desk: str) -> tuple[Table, ...]:
     """Return the challengers of a desk compactly: on the main span and, where longer, on all days."""
-    tables = []
+    tables: list[Table] = []
     for which, words in ((book.main_span, "the latest days"), (book.longest_span, "all days")):
         spans = {m: span for m in book.models if (span := which(desk, m)) is not None}
         rows = [_compact(book, desk, m, s, level) for m, s in spans.items() for level in book.levels(desk, m)]
@@ -172,14 +194,29 @@ def _compact(book: Book, desk: str, model: str, span: Span, level: float) -> tup
     ps = [p_cell(book.result(test, desk, model, span, kind, level), book) for test, _ in _COMPACT]
     size = book.result("sufficient-var-multiple", desk, model, span, kind, level)
     score = book.result("diebold-mariano", desk, model, span, kind, level)
-    better = (
-        say.DASH if score is None else f"{estimate(score)}, {p_cell(score, book)}, against {text(score['against'])}"
-    )
     days = say.whole(span.days if count is None else count["days"])
-    return (model, say.level(level), days, exceptions_cell(count), *ps, estimate(size) if size else say.DASH, better)
+    return (
+        model,
+        say.level(level),
+        days,
+        exceptions_cell(count),
+        *ps,
+        estimate(size) if size else say.DASH,
+        _score(score, book),
+    )
 
 
-BRIDGE_HEADER = ("Step", "Model", "Window", "Exceptions", "Average VaR", "Average daily change", "Score change [95%]", "Remark")  # fmt: skip
+def _score(row: Row | None, book: Book) -> str:
+    p = given(row["p_value"]) if row else None
+    if row is None or p is None:
+        return say.DASH if row is None else text(row["phrase"]) or say.DASH
+    words = text(row["direction"]) or f"against {text(row['against'])}"
+    return f"{words}: {estimate(row)}, {say.p_value(p, book.significance)}"
+
+
+BRIDGE_HEADER = (
+    "Step", "Model", "Window", "Exceptions", "Average VaR", "Average daily change", "Score change [95%]", "Remark",
+)  # fmt: skip
 
 
 def bridge_words(bridge: Bridge) -> str:
@@ -193,12 +230,17 @@ def bridge_table(bridge: Bridge) -> Table:
     level = bridge.level or 0.0
     days = f"{say.whole(bridge.days)} shared days, {bridge.first} to {bridge.last}"
     expectation = say.expected(bridge.days, level)
-    caption = f"{bridge.desk}, {say.level(level)}, {bridge.kind} P&L, {days}; {expectation} exceptions expected"
+    caption = (
+        f"{say.name(bridge.desk)}, {say.level(level)}, {bridge.kind} P&L, {days}; {expectation} exceptions expected"
+    )
     scores = say.listed(sorted({s.score_name for s in bridge.steps if s.score_name}))
     note = f"Score: {scores}, difference to the step before; below 0 is better." if scores else ""
-    return table(
-        caption, BRIDGE_HEADER, [_bridge_row(s, bridge.currency) for s in bridge.steps], BRIDGE_HEADER[2:7], note
-    )
+    remarks = {s.note for s in bridge.steps}
+    rows = [_bridge_row(s, bridge.currency) for s in bridge.steps]
+    if len(remarks) > 1:
+        return table(caption, BRIDGE_HEADER, rows, BRIDGE_HEADER[2:7], note)
+    said = f"{note} {remarks.pop()}".strip()  # one remark on every step is said once, below
+    return table(caption, BRIDGE_HEADER[:-1], [r[:-1] for r in rows], BRIDGE_HEADER[2:7], said)
 
 
 def _bridge_row(step: Step, currency: str) -> tuple[str, ...]:
@@ -210,55 +252,3 @@ def _bridge_row(step: Step, currency: str) -> tuple[str, ...]:
         change += f" [{say.number(step.low, 3)} to {say.number(step.high, 3)}]"
     counts = [say.DASH if n is None else say.whole(n) for n in (step.window, step.exceptions)]
     return (step.name, step.model, *counts, amount(step.average_var), amount(step.average_change), change, step.note)
-
-
-def exceptions_table(log: pd.DataFrame, desk: str, model: str) -> Table | None:
-    """Return the latest rows of a desk's exceptions log; None where there are none.
-
-    A flag ``exception_...`` with its ratio becomes one column; what is left over, whatever its name, a column each.
-    """
-    own = log[log["desk"] == desk] if "desk" in log else log.iloc[:0]
-    if own.empty:
-        return None
-    shown = own.sort_values("date", ascending=False).head(EXCEPTIONS_SHOWN)
-    names = [
-        str(c)
-        for c in shown.columns
-        if c not in ("desk", "model") and not str(c).startswith(("excess_", "ratio_", "es_"))
-    ]
-    columns = {_column_words(n): _log_cells(shown, n) for n in names}
-    part = (
-        f"the latest {len(shown)} of {len(own)}; all are in exceptions.csv"
-        if len(own) > len(shown)
-        else f"all {len(own)}"
-    )
-    figures = [_column_words(n) for n in names if n == "date" or pd.api.types.is_numeric_dtype(own[n].dtype)]
-    return table(f"Exceptions of {model}, {part}", columns, zip(*columns.values(), strict=True), figures)
-
-
-def _column_words(name: str) -> str:
-    prefix, _, rest = name.partition("_")
-    if prefix == "var" and rest.startswith("0."):
-        return f"VaR {say.level(float(rest))}"
-    if prefix == "exception" and "_0." in rest:
-        kind, confidence = rest.rsplit("_", 1)
-        return f"loss / VaR {say.level(float(confidence))}, {kind}"
-    return f"{name} P&L" if name in PNL_KINDS else name.replace("_", " ")
-
-
-def _log_cells(shown: pd.DataFrame, name: str) -> list[str]:
-    ratio = name.replace("exception_", "ratio_", 1)
-    if not name.startswith("exception_") or ratio not in shown:
-        return [say.cell(v) for v in shown[name]]
-    pairs = zip(shown[name], shown[ratio], strict=True)
-    return [say.DASH if not hit else "yes" if given(r) is None else say.multiple(float(r)) for hit, r in pairs]
-
-
-def remarks_table(remarks: pd.DataFrame, caption: str) -> Table | None:
-    """Return data remarks as a table; None where there are none."""
-    if remarks.empty:
-        return None
-    header = ("Rule", "Source", "Desk", "First", "Last", "Count", "What was seen")
-    columns = ["rule", "source", "desk", "first", "last", "count", "text"]
-    rows = [[say.cell(v) for v in row] for row in remarks[columns].itertuples(index=False)]
-    return table(caption, header, rows, ["First", "Last", "Count"])

@@ -6,9 +6,10 @@ from dataclasses import dataclass, replace
 from backtest.records import Record
 from backtest.reporting import figures
 from backtest.reporting import wording as say
-from backtest.reporting.book import Book, given, text
+from backtest.reporting.book import Book, Row, given, text
 from backtest.reporting.drawn import bridges, main_bridge, rule_count, scope_at, scope_of
 from backtest.reporting.facts import Scope
+from backtest.reporting.logs import exceptions_table, remarks_table
 from backtest.reporting.sentences import POSITIONS, Sentence, about, sentences
 from backtest.reporting.tables import (
     Table,
@@ -17,8 +18,6 @@ from backtest.reporting.tables import (
     challenger_tables,
     estimate,
     exceptions_cell,
-    exceptions_table,
-    remarks_table,
     result_tables,
     span_words,
     table,
@@ -27,8 +26,8 @@ from backtest.reporting.tables import (
 
 DRAFT = "Draft: no opinion given"
 CAUTIONS = (
-    "This is statistical evidence for a review. It is neither an approval nor advice, and it does not say that a model is right.",
-    "The applicable rules, the supervisor and licensed judgement decide; zone words are those of the rule named beside them.",
+    "This is statistical evidence for a review: neither an approval nor advice; it does not say that a model is right.",
+    "The applicable rules, the supervisor and licensed judgement decide; zone words are those of the rule named.",
     "A result that is not rejected shows only that these days do not contradict it. What is not tested stays open.",
     POSITIONS,
 )
@@ -146,10 +145,11 @@ def _rule_fact(book: Book, scope: Scope) -> Fact:
 def _index(book: Book) -> Table:
     levels = sorted({lv for d in book.desks for lv in book.levels(d, book.main_model)})
     header = ("Desk", "Days", *(f"Exceptions {say.level(lv)} (expected)" for lv in levels))
-    header += (f"VaR multiple {say.level(levels[0]) if levels else ''} [95%]", "Answer to how often")
+    header += (f"VaR multiple {say.level(levels[0]) if levels else ''} [95%]", "Answer to how often (level)")
     rows = [_index_row(book, desk, levels) for desk in book.desks]
     model = book.main_model
-    caption = f"Desks: {model or 'no model'}, {say.plural(book.wanted_days or 0, 'day') if book.wanted_days else 'all days'} asked for"
+    asked = say.plural(book.wanted_days, "day") if book.wanted_days else "all days"
+    caption = f"Desks: {say.name(model) or 'no model'}, {asked} asked for, hypothetical P&L"
     made = table(caption, header, rows, header[1:-2])
     return replace(made, links=tuple(f"desk-{i}" for i in range(1, len(rows) + 1)))
 
@@ -161,11 +161,27 @@ def _index_row(book: Book, desk: str, levels: list[float]) -> tuple[str, ...]:
         return (desk, "0", *([say.DASH] * (len(levels) + 1)), "not tested: no day with both a forecast and a P&L")
     counts = {lv: book.result("binomial", desk, model, scope.span, scope.kind, lv) for lv in levels}
     size = book.result("sufficient-var-multiple", desk, model, scope.span, scope.kind, levels[0])
-    asked = scope.wanted_days
-    days = say.whole(scope.span.days) + (f" of {say.whole(asked)}" if asked and scope.span.days < asked else "")
     count = counts.get(scope.count_level)
-    phrase = (text(count["phrase"]) or say.DASH) if count else "not tested"
-    return (desk, days, *(exceptions_cell(counts[lv]) for lv in levels), estimate(size) if size else say.DASH, phrase)
+    judged = scope.span.days if count is None else int(count["days"])
+    asked = scope.wanted_days
+    days = say.whole(judged) + (f" of {say.whole(asked)}" if asked and judged < asked else "")
+    return (
+        desk,
+        days,
+        *(exceptions_cell(counts[lv]) for lv in levels),
+        estimate(size) if size else say.DASH,
+        _how_often(counts, count),
+    )
+
+
+def _how_often(counts: Mapping[float, Row | None], count: Row | None) -> str:
+    """Return the answers of the levels that reject, else that of the level of counts."""
+    said: dict[str, list[str]] = {}
+    for level, row in counts.items():
+        if row is not None and row["decision"] == "rejected":
+            said.setdefault(text(row["phrase"]), []).append(say.level(level))
+    found = "; ".join(f"{phrase} ({say.listed(levels)})" for phrase, levels in said.items())
+    return found or (text(count["phrase"]) if count else "") or "not tested"
 
 
 def _desk(book: Book, desk: str, anchor: str) -> DeskView:
@@ -226,7 +242,7 @@ def _sources(record: Record) -> Table:
 
 def _flat(value: object, key: str = "") -> Iterable[tuple[str, str]]:
     if isinstance(value, Mapping) and value:
-        for name, inner in value.items():
+        for name, inner in sorted(value.items()):
             yield from _flat(inner, f"{key}.{name}" if key else str(name))
     elif isinstance(value, list) and any(isinstance(v, Mapping) for v in value):
         for i, inner in enumerate(value, start=1):
@@ -245,7 +261,7 @@ def _setting(value: object) -> str:
 def _versions(book: Book) -> list[tuple[str, str]]:
     manifest = book.record.manifest
     rows = [("tailmark", text(manifest.get("version")) or say.DASH)]
-    rows += [(str(k), str(v)) for k, v in book.mapping("versions").items()]
-    rows += [(f"seed {k}", str(v)) for k, v in book.mapping("seeds").items()]
+    rows += [(str(k), str(v)) for k, v in sorted(book.mapping("versions").items())]
+    rows += [(f"seed {k}", str(v)) for k, v in sorted(book.mapping("seeds").items())]
     rows += [(k, str(manifest[k])) for k in ("platform", "started", "finished") if k in manifest]
     return rows

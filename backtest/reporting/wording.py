@@ -20,7 +20,7 @@ P_THRESHOLDS = (0.001, 0.01, 0.05, 0.1)
 
 
 def p_value(p: float, significance: float = 0.05) -> str:
-    """Return "p = 0.012", "p < 0.001" or "p > 0.99"; the digits shown stay on the side of every threshold where p is."""
+    """Return "p = 0.012", "p < 0.001" or "p > 0.99"; digits shown stay on the side of each threshold where p is."""
     if not 0 <= p <= 1:
         raise ValueError(f"a p-value lies in [0, 1], found {p!r}")
     if p < 0.001:
@@ -67,7 +67,7 @@ def rate(count: int, days: int, expected_share: float | None = None) -> str:
 
 
 def percent(share: float, mark: float | None = None) -> str:
-    """Return a share as a percentage: two figures below 10%, never 0% for what is not zero, nor on the mark beside it."""
+    """Return a share as a percentage: two figures below 10%; never 0% for what is not zero, nor on the mark."""
     value = 100 * share
     if value == 0:
         return "0%"
@@ -83,13 +83,13 @@ def expected(days: int, confidence: float) -> str:
     return f"{value:.1f}" if value >= 0.95 else f"{value:.2g}"
 
 
-def whole(count: float) -> str:
+def whole(count: float | np.integer) -> str:
     """Return a count with thousands separated."""
     return f"{int(count):,}".replace("-", MINUS)
 
 
 def number(value: float, figures: int = 4) -> str:
-    """Return a plain number with that many significant figures; thousands separated, never in powers of ten unless tiny."""
+    """Return a plain number with that many significant figures; thousands separated, powers of ten only where tiny."""
     if math.isinf(value):
         return "infinite" if value > 0 else f"{MINUS}infinite"
     if value == 0:
@@ -104,6 +104,11 @@ def number(value: float, figures: int = 4) -> str:
 def multiple(value: float) -> str:
     """Return a multiple with two decimals, more where two would read 1 though it is not."""
     return _apart(value, 2, (0.0, 1.0)) or (f"just {'below' if value < 1 else 'above'} 1")
+
+
+def points(value: float) -> str:
+    """Return percentage points with one decimal, more where one would read 0 though it is not."""
+    return (_apart(value, 1, (0.0,)) or number(value, 1)).replace("-", MINUS)
 
 
 def ratio(value: float) -> str:
@@ -156,16 +161,16 @@ def date(value: object) -> str:
 def in_hundred(share: float) -> str:
     """Return a probability as cases in 100: "38 of 100"; the ends read "fewer than 1" and "more than 99"."""
     cases = 100 * share
-    if 0.5 <= cases <= 99.5:
+    if 0.5 < cases < 99.5:
         return f"{cases:.0f} of 100"
-    return "fewer than 1 of 100" if cases < 0.5 else "more than 99 of 100"
+    return "fewer than 1 of 100" if cases <= 0.5 else "more than 99 of 100"
 
 
 _TURNING = frozenset(("R", "AL", "RLE", "RLO", "LRE", "LRO", "RLI", "LRI", "FSI"))
 
 
 def name(text: str) -> str:
-    """Return a name as it stands in a sentence: one that is written from right to left cannot turn the words around it."""
+    """Return a name as it stands in a sentence: written from right to left it cannot turn the words around it."""
     turning = any(unicodedata.bidirectional(c) in _TURNING for c in text)
     return f"\N{FIRST STRONG ISOLATE}{text}\N{POP DIRECTIONAL ISOLATE}" if turning else text
 

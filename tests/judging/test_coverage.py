@@ -22,7 +22,7 @@ def hits(days: int, count: int) -> np.ndarray:
 
 
 def accepted(days: int, rate: float) -> list[int]:
-    """Counts that the chi-square test at 5% does not reject."""
+    """Return the counts that the chi-square test at 5% does not reject."""
     return np.flatnonzero(likelihood_ratio(np.arange(days + 1), days, rate) <= CHI2_5).tolist()
 
 

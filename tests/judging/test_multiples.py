@@ -4,8 +4,8 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from backtest.judging.multiples import multiples_table, order_limits, sufficient_es_multiple, sufficient_multiple
-from backtest.judging.samples import read_book
+from backtest.judging.multiples import order_limits, sufficient_es_multiple, sufficient_multiple
+from backtest.judging.sufficiency import multiple_results
 from tests.reference.judging_tables import tables
 
 
@@ -69,12 +69,11 @@ def test_one_day():
     assert sufficient_es_multiple(np.array([3.0]), np.array([2.0]), 0.99, 1).estimate == 1.5
 
 
-def test_table_of_multiples_gives_money():
+def test_multiples_as_results():
     losses = {"A": np.random.default_rng(1).standard_t(5, 300)}
-    book = read_book(*tables(losses, var=2.0, es=3.0, levels=(0.975,)))
-    table = multiples_table(book, [100, "all"], seed=1)
-    assert list(table["measure"]) == ["var", "es"] * 4
-    bank = table[(table["model"] == "bank") & (table["measure"] == "var")]
-    assert bank["average"].tolist() == pytest.approx([2.2, 2.2])
-    assert bank["days"].tolist() == [100, 300]
-    assert bank["note"].iloc[0] == "no upper limit at this length"
+    found = multiple_results(*tables(losses, var=2.0, es=3.0, levels=(0.975,)), spans=[100, "all"], seed=1)
+    assert [r.test for r in found] == ["sufficient-var-multiple", "sufficient-es-multiple"] * 4
+    assert [r.days for r in found if r.model == "bank"] == [100, 100, 300, 300]
+    short = found[0]
+    assert (short.p_value, short.high, short.note) == (None, None, "no upper limit at this length")
+    assert short.estimate == pytest.approx(np.sort(losses["A"][-100:])[97] / 2.2)

@@ -47,7 +47,9 @@ def test_both_scores_are_least_at_the_true_forecast():
     for dv, de in ((0.05, 0.0), (-0.05, 0.0), (0.0, 0.05), (0.0, -0.05)):
         assert mean(var + dv, es + de) > mean(var, es)
     for dv in (-0.05, 0.05):
-        assert tick(losses, np.full(200_000, var + dv), 0.975).mean() > tick(losses, np.full(200_000, var), 0.975).mean()
+        assert (
+            tick(losses, np.full(200_000, var + dv), 0.975).mean() > tick(losses, np.full(200_000, var), 0.975).mean()
+        )
 
 
 def test_differences_of_fz0_have_no_unit():
@@ -73,8 +75,8 @@ def test_long_run_variance_against_a_plain_double_sum():
     assert long_run_variance(series) == pytest.approx(newey_west_slow(series, newey_west_lag(120)), rel=1e-10)
 
 
-def test_mean_difference_is_the_t_of_the_mean_when_nothing_is_correlated():
-    # lag zero below 2 days' worth: at T = 5, floor(4 (.05)^(2/9)) = 2, so compare with the slow variance instead
+def test_mean_difference_by_its_formula():
+    # five days: lag floor(4 (.05)^(2/9)) = 2
     series = np.array([0.3, -0.1, 0.4, 0.2, -0.2])
     found = mean_difference(series)
     error = np.sqrt(newey_west_slow(series, 2) / 5) / np.sqrt(4 / 5)

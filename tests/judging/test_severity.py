@@ -43,7 +43,7 @@ def test_critical_points_at_250_days_and_97_5_percent(nu, points):
 
 @pytest.mark.parametrize(("level", "days", "point"), [(0.975, 250, -0.736), (0.975, 1000, -0.355), (0.99, 250, -1.20)])
 def test_gpd_null_is_close_to_the_full_law_of_t5(level, days, point):
-    # the null knows VaR, ES and the shape 1/5 of t5 only; its tail at the 5% point differs from the full law's by little
+    # the null knows VaR, ES and the shape 1/5 of t5 only; at the 5% point it differs from the full law by little
     sample = sample_of(np.zeros(days), stats.t.ppf(level, 5), level, es=es_t(5, level), shape=0.2)
     null = z2_null(sample, 0.2, Settings(0.05, 20_000, 3))
     assert np.mean(null <= point) == pytest.approx(0.05, abs=0.006)

@@ -5,6 +5,7 @@ the other statistics are stand-ins of the right shape. ``invented_record`` has s
 """
 
 from dataclasses import replace
+from functools import cache
 
 import numpy as np
 import pandas as pd
@@ -30,6 +31,7 @@ SPANS = (250, "all")
 DATES = pd.bdate_range("2023-09-11", periods=600).to_numpy().astype("datetime64[us]")
 
 
+@cache  # tests share it: nobody changes a table in place
 def invented_record(*, subject: bool = True, firm: bool = True, exceptions: bool = True, bridge: bool = True) -> Record:
     """Return the record; without a subject, a firm, any exception, or a bridge where a switch says so."""
     rng = np.random.default_rng(20260101)
@@ -243,7 +245,7 @@ def _manifest(forecasts: pd.DataFrame, subject: bool, firm: bool) -> dict[str, o
         },
         "inputs": [{"role": "pnl", "name": "pnl.csv", "sha256": "ab" * 32, "rows": 1331}],
         "models": [
-            {"name": n, "filter": f, "tail": t, "window": 1000, "line": f"{f} filter, {t} tail, window 1,000", "source": "invented source (2000)"}
+            {"name": n, "filter": f, "tail": t, "window": 1000, "line": f"{f} x {t}", "source": "invented (2000)"}
             for n, (f, t) in lines.items()
         ],
         "power": {"level": 0.99, "nominal_rate": 0.01, "true_rate": 0.02, "days": 250, "power": 0.3779},

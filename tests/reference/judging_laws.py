@@ -25,7 +25,7 @@ def likelihood_ratio_of_rate(hits: tuple[int, ...], rate: float) -> float:
 
 
 def likelihood_ratio_of_independence(hits: tuple[int, ...]) -> float:
-    n = {pair: 0 for pair in itertools.product((0, 1), repeat=2)}
+    n = dict.fromkeys(itertools.product((0, 1), repeat=2), 0)
     for pair in itertools.pairwise(hits):
         n[pair] += 1
     apart = 0.0

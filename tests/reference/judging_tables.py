@@ -52,7 +52,9 @@ def tables(
         pnl.append(frame.assign(actual=-0.9 * values) if actual else frame)
         for place, model in enumerate(models):
             for level in levels:
-                scaled = {k: np.asarray(v, dtype=float) * (1 + 0.1 * place) for k, v in measures.items() if k != "shape"}
+                scaled = {
+                    k: np.asarray(v, dtype=float) * (1 + 0.1 * place) for k, v in measures.items() if k != "shape"
+                }
                 if "shape" in measures:
                     scaled["shape"] = np.asarray(measures["shape"], dtype=float)
                 forecasts.append(pd.DataFrame({"date": dates, "desk": desk, "model": model, "level": level, **scaled}))

@@ -1,0 +1,57 @@
+import pytest
+
+from backtest.errors import StudyError
+from backtest.forecasting.models import NAMED, resolve, resolve_all
+
+LEVELS = (0.975, 0.99)
+
+
+@pytest.mark.parametrize("name", NAMED)
+def test_every_named_model_resolves_and_says_in_one_line_what_it_is(name):
+    model = resolve(name, levels=LEVELS)
+    assert (model.filter.kind, model.tail.kind) == (NAMED[name]["filter"], NAMED[name]["tail"])
+    assert "\n" not in model.line
+    assert "1000" in model.line
+    assert model.source
+
+
+def test_the_garch_default_is_an_ar1_mean_and_the_sample_variance():
+    model = resolve("conditional-evt", levels=LEVELS)
+    assert (model.filter.mean, model.filter.start, model.tail.share) == ("ar1", "sample-variance", 0.10)
+
+
+@pytest.mark.parametrize(
+    ("model", "said"),
+    [
+        ("historcal", "Did you mean 'historical'?"),
+        ({"name": "m", "filter": "garh"}, "Did you mean 'garch'?"),
+        ({"name": "m", "tail": "gdp"}, "Did you mean 'gpd'?"),
+        ({"name": "m", "filter": "garch", "mean": "ar2"}, "Did you mean 'ar1'?"),
+        ({"name": "m", "filter": "garch", "innovations": "t"}, "Known: normal"),
+        ({"name": "m", "filter": "none", "decay": 0.9}, "decay does not belong to none"),
+        ({"name": "m", "filter": "ewma", "mean": "ar1"}, "mean does not belong to ewma"),
+        ({"name": "m", "tail": "empirical", "tail_share": 0.1}, "tail_share does not belong to empirical"),
+        ({"name": "m", "windw": 500}, "Did you mean 'window'?"),
+        ({"name": "m", "tail": "gpd", "window": 100}, "at least 20 excesses"),
+        ({"name": "m", "tail": "gpd", "tail_share": 0.02}, "the tail starts beyond a level"),
+    ],
+)
+def test_what_does_not_exist_or_fit_is_refused_with_a_remedy(model, said):
+    with pytest.raises(StudyError, match=said.replace("?", r"\?")):
+        resolve(model, levels=LEVELS)
+
+
+def test_two_models_of_one_name_are_refused():
+    with pytest.raises(StudyError, match="two models of the same name"):
+        resolve_all(["historical", {"name": "historical"}], levels=LEVELS)
+
+
+def test_a_model_may_not_take_the_name_of_the_subject():
+    with pytest.raises(StudyError, match="two models of the same name"):
+        resolve_all(["historical"], taken=["historical"], levels=LEVELS)
+
+
+def test_residuals_are_one_fewer_where_the_first_day_only_conditions():
+    conditioned = resolve({"name": "m", "filter": "garch", "start": "ewma-75"}, levels=LEVELS)
+    assert conditioned.residuals == 999
+    assert resolve("filtered-historical", levels=LEVELS).residuals == 1000
