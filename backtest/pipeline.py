@@ -223,7 +223,7 @@ def _manifest(
     study: Study, inputs: Inputs, resolved: _Resolved, forecasts: pd.DataFrame, started: dt.datetime
 ) -> dict[str, object]:
     settings = study.model_dump(mode="json", by_alias=True, exclude_none=True)
-    level, days = 0.99, max((d for d in study.review.days if isinstance(d, int)), default=250)
+    level, days = 0.99, min((d for d in study.review.days if isinstance(d, int)), default=250)
     pnl = latest_known(inputs.pnl, inputs.as_of)
     desks = {
         str(desk): {
