@@ -12,7 +12,7 @@ import sys
 import tempfile
 from collections.abc import Callable
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import Any, TypeVar, cast
 
 import llvmlite.binding
 import numba
@@ -77,12 +77,11 @@ def is_warm() -> bool:
 
 def compiled(function: Function) -> Function:
     """Compile a kernel on first use (nopython, without the interpreter lock), cached where a folder is writable."""
-    kept = numba.config.CACHE_DIR
-    numba.config.CACHE_DIR = str(_FOLDER or "")
+    config: Any = numba.config
+    kept = config.CACHE_DIR
+    config.CACHE_DIR = str(_FOLDER or "")
     try:
-        jitted: Function = numba.njit(nogil=True, fastmath=_MATHS, error_model="numpy", cache=_FOLDER is not None)(
-            function
-        )
+        jitted: Any = numba.njit(nogil=True, fastmath=_MATHS, error_model="numpy", cache=_FOLDER is not None)(function)
     finally:
-        numba.config.CACHE_DIR = kept
-    return jitted
+        config.CACHE_DIR = kept
+    return cast(Function, jitted)

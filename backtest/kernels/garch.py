@@ -39,7 +39,7 @@ def first_variance(
             second[OMEGA, i] = second[i, OMEGA] = r * r
             for j in (ALPHA, BETA):
                 second[i, j] = 2.0 * omega * r * r * r
-        return omega * r
+        return float(omega * r)
     b, b_c, b_phi = fixed, 0.0, 0.0
     if start == MEAN_SQUARE:
         n, sx, sl, sxx, sll, sxl = moments[0], moments[1], moments[2], moments[3], moments[4], moments[5]
@@ -53,7 +53,7 @@ def first_variance(
     for i in (ALPHA, BETA):
         second[C, i] = second[i, C] = b_c
         second[PHI, i] = second[i, PHI] = b_phi
-    return omega + persistence * b
+    return float(omega + persistence * b)
 
 
 @compiled

@@ -8,7 +8,9 @@ from backtest.kernels.rolling import RUN_DAYS
 
 def known(losses, days=None, known_on=None) -> pd.DataFrame:
     days = pd.bdate_range("2020-01-06", periods=len(losses)) if days is None else pd.to_datetime(days)
-    return pd.DataFrame({"date": days, "known_on": days if known_on is None else pd.to_datetime(known_on), "loss": losses})
+    return pd.DataFrame(
+        {"date": days, "known_on": days if known_on is None else pd.to_datetime(known_on), "loss": losses}
+    )
 
 
 def calendar(first="2020-01-06", periods=12) -> np.ndarray:

@@ -192,9 +192,20 @@ def test_public_things_have_docstrings(path):
 def test_the_top_level_holds_what_it_should():
     import subprocess
 
-    tracked = subprocess.run(["git", "ls-files"], cwd=ROOT, capture_output=True, text=True, check=True).stdout.split("\n")
+    tracked = subprocess.run(["git", "ls-files"], cwd=ROOT, capture_output=True, text=True, check=True).stdout.split(
+        "\n"
+    )
     top = {line.split("/")[0] for line in tracked if line and not line.startswith(".")}
-    assert top <= {"README.md", "DEVELOPERS.md", "LICENSE", "pyproject.toml", "backtest", "tests", "data_demo", "reports"}
+    assert top <= {
+        "README.md",
+        "DEVELOPERS.md",
+        "LICENSE",
+        "pyproject.toml",
+        "backtest",
+        "tests",
+        "data_demo",
+        "reports",
+    }
 
 
 def test_the_first_result_does_not_wait_for_heavy_libraries():

@@ -28,9 +28,7 @@ def test_the_fits_of_coles_come_out(data, u, excesses, scale, shape):
 
 
 # Computed with an independent optimiser (profile likelihood on a grid, polished): shape, scale.
-@pytest.mark.parametrize(
-    ("xi", "shape", "scale"), [(0.2, 0.182925, 1.012907), (0.0, -0.019392, 1.015884)]
-)
+@pytest.mark.parametrize(("xi", "shape", "scale"), [(0.2, 0.182925, 1.012907), (0.0, -0.019392, 1.015884)])
 def test_samples_of_quantiles_have_known_fits(xi, shape, scale):
     fitted = gpd.fit_ml(sample_of_quantiles(xi), np.nan)
     assert fitted[:2] == pytest.approx((shape, scale), abs=2e-6)

@@ -1,4 +1,4 @@
-"""A second, plain implementation of the GARCH(1,1) likelihood: numpy and loops, no derivatives, complex arguments allowed."""
+"""A second, plain GARCH(1,1) likelihood: numpy and loops, no derivatives, complex arguments allowed."""
 
 import numpy as np
 
