@@ -142,7 +142,7 @@ class Record:
 
 
 def latest_known(pnl: pd.DataFrame, as_of: np.datetime64) -> pd.DataFrame:
-    """Return one row per date x desk: the value known last at ``as_of`` (datetime64); rows not known by then are left out."""
+    """Return one row per date x desk, the value known last at ``as_of``; rows not known by then are left out."""
     known = pnl[(pnl["known_on"] <= as_of) & (pnl["date"] <= as_of)]
     return known.drop_duplicates(["desk", "date"], keep="last").reset_index(drop=True)
 

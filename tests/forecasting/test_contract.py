@@ -108,12 +108,12 @@ HARD = {
     "constant zero": lambda x: 0 * x,
     "constant": lambda x: 0 * x + 4.2,
     "nearly constant": lambda x: 5 + 1e-12 * x,
-    "two-valued": lambda x: np.sign(x),
+    "two-valued": np.sign,
     "one huge loss": lambda x: np.where(np.arange(x.size) == 200, 22.9 * x.std() * 5, x),
     "sixty zeros in a row": lambda x: np.where((np.arange(x.size) >= 120) & (np.arange(x.size) < 180), 0, x),
     "a third zeros": lambda x: np.where(np.arange(x.size) % 3 == 0, 0, x),
     "all zeros but one": lambda x: np.where(np.arange(x.size) == 310, 1.0, 0.0),
-    "rounded to one figure": lambda x: np.round(x),
+    "rounded to one figure": np.round,
 }
 
 

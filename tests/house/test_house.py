@@ -29,8 +29,8 @@ INSIDE = {
     "reporting": {"reporting", "records", "errors"},
     "explaining": {"explaining", "forecasting", "judging", "kernels", "records", "errors"},
     "verbs": {"reading", "forecasting", "judging", "kernels", "records", "errors"},
-    "pipeline": {"verbs", "study", "reading", "forecasting", "judging", "recording", "reporting", "explaining", "kernels",
-                 "records", "errors"},
+    "pipeline": {"verbs", "study", "reading", "forecasting", "judging", "recording", "reporting", "explaining",
+                 "kernels", "records", "errors"},
     "cli": {"pipeline", "study", "errors"},
     "__init__": {"pipeline", "verbs", "study"},
 }  # fmt: skip

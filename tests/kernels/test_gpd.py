@@ -13,7 +13,7 @@ def sample_of_quantiles(xi: float, n: int = 100) -> np.ndarray:
     return -np.log1p(-p) if xi == 0 else ((1 - p) ** -xi - 1) / xi
 
 
-# Coles (2001), An Introduction to Statistical Modeling of Extreme Values, sections 4.4.1 and 4.4.2 (values from memory).
+# Coles (2001), An Introduction to Statistical Modeling of Extreme Values, sections 4.4.1, 4.4.2 (values from memory).
 @pytest.mark.parametrize(
     ("data", "u", "excesses", "scale", "shape"),
     [(rain, 30, 152, (7.44, 0.005), (0.184, 0.0006)), (dow_jones, 2, 37, (0.495, 0.0006), (0.288, 0.0006))],
