@@ -49,7 +49,8 @@ class _Shown:
         return self
 
     def __exit__(self, *_: object) -> None:
-        self._bar.stop()
+        if self._console.is_terminal:  # elsewhere stopping a bar that never started writes an empty line
+            self._bar.stop()
 
     def __call__(self, what: str, done: int, total: int) -> None:
         if self._console.is_terminal:

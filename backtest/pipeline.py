@@ -10,9 +10,10 @@ import joblib
 import numpy as np
 import pandas as pd
 
+from backtest.errors import StudyError
 from backtest.explaining.steps import DeskSteps, Method, desk_steps, resolve_windows
 from backtest.forecasting.engine import DeskHistory, joined
-from backtest.forecasting.histories import desk_histories
+from backtest.forecasting.histories import check_past, desk_histories, learnt_from
 from backtest.forecasting.models import Model, resolve, resolve_all
 from backtest.judging import battery
 from backtest.judging.bridge import bridge_table
@@ -71,6 +72,7 @@ def _resolve(study: Study) -> _Resolved:
     pairs = [m.model_dump(exclude_none=True) for m in plan.model]
     taken = [review.subject] if review.subject else []
     models = resolve_all([*plan.models, *pairs], taken=taken, every_start=plan.every_start, **settings)
+    check_past(models, plan.learn_from)
     resolve_rules(review.rules)
     resolve_windows(plan.levels)
     methods = []
@@ -80,13 +82,25 @@ def _resolve(study: Study) -> _Resolved:
     return _Resolved(models, tuple(methods), battery.resolve(study.judge.tests))
 
 
+def _inputs(study: Study, resolved: _Resolved) -> Inputs:
+    """Read the data, and refuse a challenger that bears the name of a reported model other than the subject."""
+    inputs = read_inputs(study)
+    shared = sorted({m.name for m in resolved.models} & set(inputs.reported["model"]))
+    if shared:
+        raise StudyError(
+            "a challenger and a model of the reported file have the same name", value=shared[0], place=str(study.path),
+            rule="a name stands for one model", remedy="Give the challenger another name in [[forecast.model]].",
+        )  # fmt: skip
+    return inputs
+
+
 def check(study: Study) -> list[str]:
     """Resolve every name of a study and read all its data; return lines on what was read and every remark.
 
     Raises what a run would raise; computes nothing.
     """
-    _resolve(study)
-    return input_lines(read_inputs(study))
+    resolved = _resolve(study)
+    return input_lines(_inputs(study, resolved))
 
 
 def draft(files: Sequence[str | Path]) -> str:
@@ -110,8 +124,10 @@ def run(
     started, report = dt.datetime.now(dt.UTC), progress or silent
     resolved = _resolve(study)
     report("reading", 0, 1)
-    inputs = read_inputs(study)
-    histories = desk_histories(inputs.pnl, inputs.calendar, inputs.as_of, study.forecast.learn_from, inputs.desks)
+    inputs = _inputs(study, resolved)
+    histories = desk_histories(
+        inputs.pnl, inputs.calendar, inputs.as_of, study.forecast.learn_from, inputs.desks, inputs.vectors
+    )
     cores = workers or joblib.cpu_count()
     forecasts, fits = forecast_desks(histories, resolved.models, study.forecast.levels, cores, report)
     bridge = _bridge_steps(study, inputs, histories, forecasts, resolved, cores, report)
@@ -230,6 +246,7 @@ def _manifest(
             "first": f"{rows['date'].min():%Y-%m-%d}",
             "last": f"{rows['date'].max():%Y-%m-%d}",
             "days": len(rows),
+            **learnt_from(study.forecast.learn_from, inputs.vectors, str(desk)),
         }
         for desk, rows in pnl.groupby("desk")
     }

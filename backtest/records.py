@@ -3,10 +3,11 @@
 Signs: P&L tables carry profit as positive; losses, VaR and ES are positive loss amounts in the unit of the P&L.
 Level: the confidence, 0.99; the exception probability is 1 - level.
 Exception: loss strictly greater than VaR. Dates: ``date`` is the target, the day whose P&L is forecast; ``origin``
-is the last day whose P&L was used. All date columns are ``datetime64[us]`` without zone.
+is the last day whose P&L was used (of vectors: whose market move). Date columns are ``datetime64[us]`` without zone.
 """
 
-from dataclasses import dataclass, fields
+from collections.abc import Mapping
+from dataclasses import dataclass, field, fields
 
 import numpy as np
 import pandas as pd
@@ -14,13 +15,16 @@ import pandas as pd
 DATE_DTYPE = "datetime64[us]"
 PNL_KINDS = ("hypothetical", "actual")
 """The P&L kinds that VaR is judged against; risk-theoretical P&L serves attribution only."""
+VECTORS = "vectors"
+"""What models learn from where it is no P&L kind: each day's positions under past market moves."""
 
 FORECAST_COLUMNS = (
     "date", "origin", "desk", "model", "level", "horizon", "var", "es", "mean", "sigma", "shape", "scale",
     "threshold", "pit_hypothetical", "pit_actual", "status",
 )  # fmt: skip
 FIT_COLUMNS = (
-    "date", "desk", "filter", "window", "recalibrated_on", "intercept", "ar", "omega", "alpha", "beta", "loglik",
+    "date", "desk", "filter", "window", "recalibrated_on", "intercept", "ar", "omega", "alpha", "gamma", "beta",
+    "nu", "lambda", "loglik",
     "second_mode_sigma", "status",
 )  # fmt: skip
 BRIDGE_COLUMNS = (
@@ -62,6 +66,39 @@ class Remark:
 
 
 @dataclass(frozen=True)
+class DeskVectors:
+    """The P&L vectors of one desk: for each target day its positions, as known the evening before, under past moves.
+
+    days: datetime64[D] (n), target days, ascending, each once; begins, ends (n): the vector of day i lies at
+    ``begins[i]:ends[i]`` of scenarios (datetime64[D]: the past day whose market move it is, ascending) and pnl (profit
+    positive).
+    """
+
+    days: np.ndarray
+    begins: np.ndarray
+    ends: np.ndarray
+    scenarios: np.ndarray
+    pnl: np.ndarray
+
+    @property
+    def counts(self) -> np.ndarray:
+        """How many scenarios the vector of each day has (n)."""
+        return np.asarray(self.ends - self.begins)
+
+    def kept(self, rows: np.ndarray, days: np.ndarray | None = None) -> "DeskVectors":
+        """Return the vectors of some days (bool[n]), under the new ``days`` (as many as are kept) where given."""
+        of = self.days[rows] if days is None else days
+        return DeskVectors(of, self.begins[rows], self.ends[rows], self.scenarios, self.pnl)
+
+
+NO_VECTORS = DeskVectors(
+    np.empty(0, "datetime64[D]"), np.empty(0, np.int64), np.empty(0, np.int64), np.empty(0, "datetime64[D]"),
+    np.empty(0, np.float64),
+)  # fmt: skip
+"""The vectors of a desk that has none."""
+
+
+@dataclass(frozen=True)
 class Inputs:
     """What reading hands over: checked tables, in the conventions above.
 
@@ -70,7 +107,8 @@ class Inputs:
     desk, date, known_on; a date x desk has several rows only where restated. NaN means "no P&L that day".
     reported: ``date, desk, model, level, var, es, sigma, pit`` (NaN where not supplied), sorted by desk, model, level,
     date; ``date`` is the target day. desks: ``desk, parent, valid_from, valid_to, scope, currency, kind``. changes:
-    ``date, desk, kind, note``. calendar: datetime64[D], the business days from the first P&L to ``as_of``.
+    ``date, desk, kind, note``. calendar: datetime64[D], the business days from the first P&L to ``as_of``. vectors: by
+    desk, of business days up to ``as_of``, every scenario before its day; empty where none are supplied.
     """
 
     pnl: pd.DataFrame
@@ -81,6 +119,7 @@ class Inputs:
     as_of: np.datetime64
     remarks: tuple[Remark, ...]
     sources: tuple[Source, ...]
+    vectors: Mapping[str, DeskVectors] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)

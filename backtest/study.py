@@ -47,6 +47,7 @@ class Method(_Form):
     mean: str | None = None
     innovations: str | None = None
     start: str | None = None
+    age_decay: float | None = Field(default=None, gt=0, lt=1)
     tail_share: float | None = Field(default=None, gt=0, lt=0.5)
 
 
@@ -96,13 +97,22 @@ class Columns(_Form):
 
 
 class Data(_Form):
-    """Where the tables lie and how they are written. ``reported_columns`` overrides ``columns`` for that file."""
+    """Where the tables lie and how they are written. ``reported_columns`` overrides ``columns`` for that file.
+
+    Current positions under past moves come from ``vectors`` (``date, desk, scenario, pnl``) or, for linear books, from
+    ``factors`` (``date, factor, return``) and ``exposures`` (``date, desk, factor, amount``): the P&L of a scenario is
+    the sum of amount x return, profit positive. ``date`` of vectors and exposures follows ``var_date``; a scenario is
+    a past day, whose market move is applied to the positions of ``date``.
+    """
 
     pnl: FilePath
     reported: FilePath | None = None
     desks: FilePath | None = None
     changes: FilePath | None = None
     calendar: FilePath | None = None
+    vectors: FilePath | None = None
+    factors: FilePath | None = None
+    exposures: FilePath | None = None
     currency: str = "EUR"
     var_date: Literal["target", "as-of"] = "target"
     pnl_sign: Literal["profit-positive", "loss-positive"] = "profit-positive"
@@ -120,6 +130,14 @@ class Data(_Form):
             raise ValueError("separator and decimal cannot be the same character")
         return self
 
+    @model_validator(mode="after")
+    def _one_kind_of_vectors(self) -> "Data":
+        if (self.factors is None) != (self.exposures is None):
+            raise ValueError("factors and exposures go together: vectors are built from both")
+        if self.vectors is not None and self.factors is not None:
+            raise ValueError("vectors are supplied or built from factors and exposures, not both")
+        return self
+
 
 class ModelSettings(_Form):
     """A pair of filter and tail, named by the user; names are resolved by the model grammar."""
@@ -131,6 +149,7 @@ class ModelSettings(_Form):
     mean: str | None = None
     innovations: str | None = None
     start: str | None = None
+    age_decay: float | None = Field(default=None, gt=0, lt=1)
     tail_share: float | None = Field(default=None, gt=0, lt=0.5)
     gpd_fit: str | None = None
     window: int | None = Field(default=None, ge=50)
@@ -138,12 +157,12 @@ class ModelSettings(_Form):
 
 
 class Forecast(_Form):
-    """Which challengers are run, on which past."""
+    """Which challengers are run, on which past: P&L as it came, or (vectors) each day's positions under past moves."""
 
     window: int = Field(default=1000, ge=50)
     recalibrate_days: int = Field(default=1, ge=1)
     levels: tuple[Level, ...] = Field(default=(0.975, 0.99), min_length=1)
-    learn_from: Literal["hypothetical", "actual"] = "hypothetical"
+    learn_from: Literal["hypothetical", "actual", "vectors"] = "hypothetical"
     fallback_share: float = Field(default=0.01, ge=0, le=1)
     every_start: bool = False
     models: tuple[str, ...] = ("historical", "filtered-historical", "unconditional-evt", "conditional-evt")

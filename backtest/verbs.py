@@ -9,12 +9,12 @@ import pandas as pd
 
 from backtest.errors import StudyError
 from backtest.forecasting.engine import DeskHistory, forecast_group, groups, joined
-from backtest.forecasting.histories import desk_histories
+from backtest.forecasting.histories import check_past, desk_histories
 from backtest.forecasting.models import Model, resolve_all
 from backtest.judging import battery
 from backtest.kernels.compiled import is_warm
-from backtest.reading.frames import pnl_table
-from backtest.records import FIT_COLUMNS, FORECAST_COLUMNS, PNL_KINDS, latest_known, results_table
+from backtest.reading.frames import pnl_table, vectors_table
+from backtest.records import FIT_COLUMNS, FORECAST_COLUMNS, PNL_KINDS, VECTORS, latest_known, results_table
 
 Progress = Callable[[str, int, int], None]
 """Called with what is being done, how much of it is done, and of how much."""
@@ -34,6 +34,7 @@ def forecast(
     *,
     recalibrate_days: int = 1,
     learn_from: str = "hypothetical",
+    vectors: pd.DataFrame | None = None,
     calendar: Sequence[Any] | np.ndarray | None = None,
     every_start: bool = False,
     workers: int = 1,
@@ -43,20 +44,23 @@ def forecast(
 
     ``pnl``: long table ``date, desk, hypothetical`` (also ``actual``, ``known_on``) or a Series indexed by date, profit
     positive; ``models``: names or mappings with the keys of ``[[forecast.model]]``; ``calendar``: business days, else
-    the union of the table's days. Returns the forecasts table (``records.FORECAST_COLUMNS``); the number of ``workers``
-    (threads) changes nothing in it. Raises StudyError for models, levels or settings that do not exist or do not fit,
-    DataError for a table that cannot be used.
+    the union of the table's days; ``vectors`` with ``learn_from="vectors"``: ``date, desk, scenario, pnl``, the P&L of
+    each target day's positions under the market moves of past days, so that the past is the last ``window`` scenarios
+    before it (a desk or day without a vector of that length has no forecast). Returns the forecasts table
+    (``records.FORECAST_COLUMNS``); the number of ``workers`` (threads) changes nothing in it. Raises StudyError for
+    models, levels or settings that do not exist or do not fit, DataError for a table that cannot be used.
     """
     _check_levels(levels)
     resolved = resolve_all(
         models, levels=levels, window=window, recalibrate_days=recalibrate_days, every_start=every_start
     )
     table = pnl_table(pnl)
-    if learn_from not in PNL_KINDS or learn_from not in table:
-        raise StudyError("learn_from names no P&L of the table", value=learn_from, place="forecast")
+    _check_learn_from(learn_from, table, vectors)
+    check_past(resolved, learn_from)
+    positions = None if vectors is None else vectors_table(vectors, table["desk"].unique())
     days = table["date"].to_numpy() if calendar is None else np.asarray(calendar)
     business = np.unique(days.astype("datetime64[D]"))
-    histories = desk_histories(table, business, business[-1], learn_from, None)
+    histories = desk_histories(table, business, business[-1], learn_from, None, positions)
     forecasts, _ = forecast_desks(histories, resolved, levels, workers, progress or silent)
     return forecasts
 
@@ -111,6 +115,14 @@ def each(call: Callable[[Any], Any], tasks: Sequence[Any], workers: int, report:
         report(what, i + 1, len(tasks))
         found.append(part)
     return found
+
+
+def _check_learn_from(learn_from: str, pnl: pd.DataFrame, vectors: pd.DataFrame | None) -> None:
+    if (learn_from == VECTORS) != (vectors is not None):
+        remedy = "Hand over vectors and learn_from='vectors', or neither."
+        raise StudyError("learn_from and vectors do not go together", value=learn_from, place="forecast", remedy=remedy)
+    if learn_from != VECTORS and (learn_from not in PNL_KINDS or learn_from not in pnl):
+        raise StudyError("learn_from names no P&L of the table", value=learn_from, place="forecast")
 
 
 def _check_levels(levels: Sequence[float]) -> None:

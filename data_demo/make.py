@@ -21,6 +21,8 @@ from world import DESKS, LEGACY_CLOSED, METALS_HALVED, OPENING, World, simulate
 SEED = 97
 YEAR = 250
 KINDS = ("hypothetical", "actual", "risk_theoretical")
+VECTOR_DESKS, SCENARIOS = ("Rates", "Metals"), 500
+"""Desks with P&L vectors: one of constant positions, and the one whose positions were halved."""
 
 
 @dataclass(frozen=True)
@@ -128,6 +130,26 @@ def changes_table(demo: Demo) -> pd.DataFrame:
     return pd.DataFrame(changes, columns=["date", "desk", "kind", "note"]).sort_values("date", kind="stable")
 
 
+def vectors_table(demo: Demo) -> pd.DataFrame:
+    """Return date, desk, scenario, pnl: for the last year, the desk's positions of the day under the moves before it.
+
+    A day's P&L is its position times the market's move; the same move under another day's position is that P&L times
+    the ratio of positions (the books are linear in the moves). A restated day stands with its final value: what was
+    booked late was the P&L, not the move.
+    """
+    tables = []
+    last = demo.world.days.size
+    for name in VECTOR_DESKS:
+        j = NAMES.index(name)
+        position = demo.ledger.scale[:, j]
+        for day in range(last - YEAR, last):
+            past = slice(day - SCENARIOS, day)
+            pnl = demo.ledger.kinds["hypothetical"][past, j] * (position[day] / position[past])
+            days = {"date": demo.world.days[day], "desk": name, "scenario": demo.world.days[past]}
+            tables.append(pd.DataFrame({**days, "pnl": np.round(pnl) / 100}))
+    return pd.concat(tables, ignore_index=True)
+
+
 def write(demo: Demo, folder: Path) -> None:
     """Write every file but the study, which is kept by hand."""
     days = demo.world.days
@@ -141,6 +163,7 @@ def write(demo: Demo, folder: Path) -> None:
     for name, table in tables.items():
         table.to_csv(folder / name, index=False, float_format="%.2f", lineterminator="\n", encoding="utf-8")
     truth_table(demo).to_parquet(folder / "truth.parquet", index=False, compression="zstd")
+    vectors_table(demo).to_parquet(folder / "vectors.parquet", index=False, compression="zstd")
 
 
 if __name__ == "__main__":

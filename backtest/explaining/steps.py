@@ -9,7 +9,6 @@ import pandas as pd
 
 from backtest.forecasting.engine import DeskHistory, forecast_group, groups
 from backtest.forecasting.models import Model, resolve
-from backtest.forecasting.windows import plan
 from backtest.judging.bridge import FEWEST_SHARED_DAYS, STEPS, Step
 
 WINDOWS = (1000, 750, 500)
@@ -79,7 +78,7 @@ def choose_window(history: DeskHistory, before: Sequence[pd.DataFrame]) -> int |
         known = table.loc[table["var"].notna(), "date"].to_numpy().astype("datetime64[D]")
         days = np.intersect1d(days, known)
     for window in WINDOWS:
-        targets = plan(history.known, history.calendar, window).targets
+        targets = history.plan(window).targets
         if len(np.intersect1d(days, targets)) >= FEWEST_SHARED_DAYS:
             return window
     return None
@@ -104,17 +103,24 @@ def _challengers(
     wanted = resolve_windows(levels)[window]
     found = {name: model for name in _MODELS for model in ready if _same(model, wanted[_MODELS.index(name)])}
     missing = [m for m in wanted if m.name not in found]
+    labels = {m.name: _label(m, ready) for m in missing}
     new = []
     for group in groups(missing):
         table, _ = forecast_group(history, group, levels)
-        new.append(table.assign(model=table["model"] + f" {window}"))
+        new.append(table.assign(model=table["model"].map(labels)))
     steps = []
     for model, step in zip(wanted, STEPS[2:], strict=True):
         own = found.get(model.name)
-        name = own.name if own else f"{model.name} {window}"
+        name = own.name if own else labels[model.name]
         rows = next((t for t in [made, *new] if (t["model"] == name).any()), made)
         steps.append(Step(step, name, window, rows[rows["model"] == name]))
     return steps, new
+
+
+def _label(model: Model, ready: Sequence[Model]) -> str:
+    """Return the name of a challenger made for the bridge alone: never that of a model of the study."""
+    label = f"{model.name} {model.window}"
+    return f"{label} (bridge)" if label in {m.name for m in ready} else label
 
 
 def _same(one: Model, other: Model) -> bool:

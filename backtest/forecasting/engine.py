@@ -7,10 +7,11 @@ import numpy as np
 import pandas as pd
 
 from backtest.forecasting.filters import Filtered, apply_filter
-from backtest.forecasting.models import FilterSpec, Model
-from backtest.forecasting.tails import apply_tail, standardise
-from backtest.forecasting.windows import Plan, plan
-from backtest.records import DATE_DTYPE, FIT_COLUMNS, FORECAST_COLUMNS, PNL_KINDS
+from backtest.forecasting.models import ESTIMATED, FilterSpec, Model
+from backtest.forecasting.tail_laws import standardise
+from backtest.forecasting.tails import apply_tail
+from backtest.forecasting.windows import Plan, plan, plan_vectors
+from backtest.records import DATE_DTYPE, FIT_COLUMNS, FORECAST_COLUMNS, PNL_KINDS, DeskVectors
 
 
 @dataclass(frozen=True)
@@ -18,20 +19,28 @@ class DeskHistory:
     """What one desk hands to the engine.
 
     known: ``date, known_on, loss``, see ``windows.plan``; calendar: its business days, datetime64[D]; realised: loss
-    by P&L kind indexed by day (datetime64[D]), as known at the cut-off, for the PIT.
+    by P&L kind indexed by day (datetime64[D]), as known at the cut-off, for the PIT; vectors: what models learn from
+    instead of ``known``, None where they learn from it.
     """
 
     desk: str
     known: pd.DataFrame
     calendar: np.ndarray
     realised: dict[str, pd.Series]
+    vectors: DeskVectors | None = None
+
+    def plan(self, window: int) -> Plan:
+        """Return the target days and the past of each, of ``window`` losses."""
+        if self.vectors is not None:
+            return plan_vectors(self.vectors, self.calendar, window)
+        return plan(self.known, self.calendar, window)
 
 
 def groups(models: Sequence[Model]) -> list[list[Model]]:
     """Group models that share a filter, a window and a recalibration: the filter is rolled once for each group."""
     grouped: dict[tuple[FilterSpec, int, int], list[Model]] = {}
     for model in models:
-        every = model.recalibrate_days if model.filter.kind == "garch" else 1
+        every = model.recalibrate_days if model.filter.kind in ESTIMATED else 1
         grouped.setdefault((model.filter, model.window, every), []).append(model)
     return list(grouped.values())
 
@@ -43,7 +52,7 @@ def forecast_group(
 
     A desk shorter than the window has no target days and gives empty tables.
     """
-    days = plan(history.known, history.calendar, models[0].window)
+    days = history.plan(models[0].window)
     q = np.array(levels, dtype=np.float64)
     tables, fits = [], []
     for rows in days.blocks():
@@ -78,7 +87,7 @@ def _model_block(
     desk: str, model: Model, days: Plan, rows: slice, filtered: Filtered, q: np.ndarray, realised: dict[str, np.ndarray]
 ) -> pd.DataFrame:
     standard = model.filter.kind != "none"
-    tailed = apply_tail(filtered.residuals, model.tail, q, days.places[rows], standard)
+    tailed = apply_tail(filtered, model.tail, q, days.places[rows])
     mean = filtered.mean if standard else np.zeros(len(filtered.mean))
     sigma = filtered.sigma if standard else np.ones(len(filtered.mean))
     n, L = tailed.quantile.shape

@@ -1,14 +1,14 @@
 """Filters: what takes the changing mean and volatility out of a past; one function each, registered in one place."""
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
-from backtest.forecasting.models import MEANS, STARTS, FilterSpec
-from backtest.kernels import search
+from backtest.forecasting.models import INNOVATIONS, MEANS, STARTS, FilterSpec
+from backtest.kernels import garch, rolling
 from backtest.kernels.ewma import roll_ewma
-from backtest.kernels.rolling import roll_garch
+from backtest.kernels.parameters import ETA, LAMBDA
 from backtest.records import FALLBACK
 
 
@@ -17,7 +17,9 @@ class Filtered:
     """A filter rolled over the pasts of a block.
 
     mean, sigma (n): of the target day, NaN where the filter has none to say (filter none); residuals (n, m); status (n)
-    of words; fits: named columns (n) for the fits table, empty where nothing is estimated.
+    of words; fits: named columns (n) for the fits table, empty where nothing is estimated; law: of the standardised
+    residuals ("normal", "t", "skew-t"), empty where they are not standardised; shape (n, 2): nu and lambda of the
+    innovations, NaN in rows without them, empty where the law has no shape.
     """
 
     mean: np.ndarray
@@ -25,17 +27,19 @@ class Filtered:
     residuals: np.ndarray
     status: np.ndarray
     fits: dict[str, np.ndarray]
+    law: str = ""
+    shape: np.ndarray = field(default_factory=lambda: np.empty((0, 2)))
 
 
 FITTED_WORDS = {
-    search.BOUND_ALPHA: "alpha at 0",
-    search.BOUND_PERSISTENCE: "persistence at its cap",
-    search.FLAT: "flat optimum",
-    search.SECOND_MODE: "second mode near",
-    search.RESTARTED: "restarted",
-    search.LAST_GOOD: f"{FALLBACK}: last good parameters",
-    search.AS_EWMA: f"{FALLBACK}: ewma",
-    search.CONSTANT: f"{FALLBACK}: constant past",
+    rolling.BOUND_REACTION: "no reaction",
+    rolling.BOUND_PERSISTENCE: "persistence at its cap",
+    rolling.FLAT: "flat optimum",
+    rolling.SECOND_MODE: "second mode near",
+    rolling.RESTARTED: "restarted",
+    garch.LAST_GOOD: f"{FALLBACK}: last good parameters",
+    garch.AS_EWMA: f"{FALLBACK}: ewma",
+    rolling.CONSTANT: f"{FALLBACK}: constant past",
 }
 
 
@@ -53,26 +57,36 @@ def _none(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.nda
 
 def _ewma(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.ndarray) -> Filtered:
     sigma, residuals = roll_ewma(pasts, spec.decay)
-    status = np.where(sigma > 0, "", FITTED_WORDS[search.CONSTANT]).astype(object)
-    return Filtered(np.zeros(len(pasts)), sigma, residuals, status, {})
+    status = np.where(sigma > 0, "", FITTED_WORDS[rolling.CONSTANT]).astype(object)
+    return Filtered(np.zeros(len(pasts)), sigma, residuals, status, {}, "normal")
 
 
 def _garch(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.ndarray) -> Filtered:
-    mean = MEANS.index(spec.mean)
-    estimated = {"zero": (2, 3, 4), "constant": (0, 2, 3, 4), "ar1": (0, 1, 2, 3, 4), "ar1-no-intercept": (1, 2, 3, 4)}
-    free = np.array(estimated[spec.mean], dtype=np.int64)
-    parameters, numbers, bits, residuals = roll_garch(
-        pasts, places, refit, free, mean, STARTS.index(spec.start), spec.every_start
+    shapes = INNOVATIONS.index(spec.innovations)
+    member = garch.member(
+        MEANS.index(spec.mean), STARTS.index(spec.start), gjr=spec.kind == "gjr", shapes=shapes,
+        every_start=spec.every_start,
+    )  # fmt: skip
+    found = garch.roll(pasts, places, refit, member)
+    unused = np.setdiff1d(np.arange(found.parameters.shape[1]), member.free)
+    found.parameters[:, unused] = np.nan
+    fits = {name: found.parameters[:, i] for i, name in garch.NAMES.items()}
+    fits["nu"] = 1.0 / fits.pop("eta")
+    fits |= {"loglik": found.loglik, "second_mode_sigma": found.second_sigma}
+    shape = (
+        np.column_stack([1.0 / found.parameters[:, ETA], found.parameters[:, LAMBDA]]) if shapes else np.empty((0, 2))
     )
-    fits = dict(zip(("intercept", "ar", "omega", "alpha", "beta"), parameters.T, strict=True))
-    fits |= {"loglik": numbers[:, 0], "second_mode_sigma": numbers[:, 3]}
-    return Filtered(numbers[:, 1], numbers[:, 2], residuals, words(bits, FITTED_WORDS), fits)
+    if shapes == 1:
+        shape[:, 1] = np.nan
+    texts = words(found.status, FITTED_WORDS)
+    return Filtered(found.mean, found.sigma, found.residuals, texts, fits, spec.innovations, shape)
 
 
 FILTERS: dict[str, Callable[[np.ndarray, FilterSpec, np.ndarray, np.ndarray], Filtered]] = {
     "none": _none,
     "ewma": _ewma,
     "garch": _garch,
+    "gjr": _garch,
 }
 
 

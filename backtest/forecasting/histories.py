@@ -1,10 +1,14 @@
-"""From the P&L of many desks to what each hands to the engine."""
+"""From the P&L of many desks, and their vectors where models learn from those, to what each hands to the engine."""
+
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 import pandas as pd
 
+from backtest.errors import StudyError
 from backtest.forecasting.engine import DeskHistory
-from backtest.records import PNL_KINDS, latest_known
+from backtest.forecasting.models import Model
+from backtest.records import NO_VECTORS, PNL_KINDS, VECTORS, DeskVectors, latest_known
 
 
 def desk_histories(
@@ -13,14 +17,17 @@ def desk_histories(
     as_of: np.datetime64,
     learn_from: str,
     desks: pd.DataFrame | None = None,
+    vectors: Mapping[str, DeskVectors] | None = None,
 ) -> list[DeskHistory]:
     """Return each desk's history, in order of names.
 
-    ``pnl``: as records.Inputs.pnl; ``learn_from``: the column that models learn from. A desk's business days run from
-    its first P&L to its ``valid_to`` in ``desks``, else to ``as_of``: a day without P&L keeps its forecast.
+    ``pnl``: as records.Inputs.pnl; ``learn_from``: the column that models learn from, or "vectors": then a desk that
+    ``vectors`` does not have has no past and no forecast. A desk's business days run from its first P&L to its
+    ``valid_to`` in ``desks``, else to ``as_of``: a day without P&L keeps its forecast.
     """
     latest = latest_known(pnl, as_of)
-    known = pnl[pnl["known_on"] <= as_of].assign(loss=lambda t: -t[learn_from])
+    own = learn_from == VECTORS
+    known = pnl[pnl["known_on"] <= as_of].assign(loss=lambda t: -t[PNL_KINDS[0] if own else learn_from])
     ends = {} if desks is None else dict(zip(desks["desk"], desks["valid_to"], strict=True))
     histories = []
     for desk, rows in known.groupby("desk", sort=True):
@@ -30,5 +37,34 @@ def desk_histories(
         end = ends.get(desk)
         last = as_of if end is None or pd.isna(end) else min(as_of, np.datetime64(end, "D"))
         days = calendar[(calendar >= rows["date"].min().to_datetime64()) & (calendar <= last)]
-        histories.append(DeskHistory(str(desk), rows[["date", "known_on", "loss"]], days, realised))
+        past = (vectors or {}).get(str(desk), NO_VECTORS) if own else None
+        histories.append(DeskHistory(str(desk), rows[["date", "known_on", "loss"]], days, realised, past))
     return histories
+
+
+def learnt_from(learn_from: str, vectors: Mapping[str, DeskVectors], desk: str) -> dict[str, object]:
+    """Return what the models of a desk learnt from, for the manifest: its name and, of vectors, how many there are.
+
+    ``vectors``: days with a vector; ``scenarios``: the fewest and the most scenarios of one.
+    """
+    if learn_from != VECTORS:
+        return {"learn_from": learn_from}
+    counts = vectors.get(desk, NO_VECTORS).counts
+    span = [int(counts.min()), int(counts.max())] if len(counts) else [0, 0]
+    return {"learn_from": learn_from, "vectors": len(counts), "scenarios": span}
+
+
+def check_past(models: Sequence[Model], learn_from: str) -> None:
+    """Refuse models that keep parameters for days on end where the positions behind the past change every day.
+
+    A volatility filter's parameters are in money: fitted on yesterday's positions they do not fit today's.
+    """
+    for model in models:
+        if learn_from == VECTORS and model.filter.kind not in ("none", "ewma") and model.recalibrate_days > 1:
+            raise StudyError(
+                "parameters cannot be kept from day to day where models learn from vectors",
+                rule="learn_from = 'vectors' needs recalibrate_days = 1: positions change, parameters are in money",
+                value=model.recalibrate_days,
+                place=f"model {model.name!r}",
+                remedy="Set recalibrate_days = 1.",
+            )

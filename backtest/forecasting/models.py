@@ -10,7 +10,12 @@ from backtest.errors import StudyError, near_miss
 from backtest.kernels.gpd import FEWEST
 
 MEANS = ("zero", "constant", "ar1", "ar1-no-intercept")
+GPD_FITS = ("ml", "zhang-stephens", "pwm")
+"""In the order of the estimators of kernels/gpd.py."""
 STARTS = ("sample-variance", "mean-square", "unconditional", "ewma-75")
+INNOVATIONS = ("normal", "t", "skew-t")
+ESTIMATED = ("garch", "gjr")
+"""Filters with parameters to estimate."""
 
 
 @dataclass(frozen=True)
@@ -21,12 +26,13 @@ class FilterSpec:
     decay: float = 0.0
     mean: str = "zero"
     start: str = ""
+    innovations: str = ""
     every_start: bool = False
 
     @property
     def label(self) -> str:
         """The filter as written in the fits table."""
-        return f"{self.kind} {self.mean} {self.start}" if self.kind == "garch" else self.kind
+        return f"{self.kind} {self.mean} {self.innovations} {self.start}" if self.kind in ESTIMATED else self.kind
 
 
 @dataclass(frozen=True)
@@ -36,6 +42,7 @@ class TailSpec:
     kind: str
     share: float = 0.0
     fit: str = ""
+    decay: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -58,41 +65,61 @@ class Model:
     def line(self) -> str:
         """The model in one line."""
         every = "daily" if self.recalibrate_days == 1 else f"every {self.recalibrate_days} days"
-        fitted = f"; recalibrated {every}" if self.filter.kind == "garch" else ""
+        fitted = f"; recalibrated {every}" if self.filter.kind in ESTIMATED else ""
         return f"{_FILTER_LINES[self.filter.kind](self)}; {_TAIL_LINES[self.tail.kind](self)}{fitted}"
 
     @property
     def source(self) -> str:
         """The published sources of filter and tail."""
-        sources = (_SOURCES[self.filter.kind], _SOURCES[self.tail.kind])
+        sources = (_SOURCES[self.filter.kind], _SOURCES[self.tail.kind], _SOURCES.get(self.tail.fit, ""))
         return "; ".join(s for s in sources if s) or "common practice, no source"
 
 
 _FILTER_LINES: dict[str, Any] = {
     "none": lambda m: f"last {m.window} losses as they are",
     "ewma": lambda m: f"last {m.window} losses over an EWMA volatility (decay {m.filter.decay:g})",
-    "garch": lambda m: (
-        f"last {m.window} losses through a {m.filter.mean} mean and GARCH(1,1) volatility by Gaussian quasi maximum "
-        f"likelihood (start {m.filter.start})"
-    ),
+    "garch": lambda m: _estimated_line(m, "GARCH(1,1)"),
+    "gjr": lambda m: _estimated_line(m, "GJR(1,1)"),
 }
+_BY_LAW = {
+    "normal": "Gaussian quasi maximum likelihood",
+    "t": "maximum likelihood with Student t innovations",
+    "skew-t": "maximum likelihood with skewed t innovations",
+}
+_BY = {"ml": "", "zhang-stephens": " by Zhang-Stephens", "pwm": " by probability-weighted moments"}
 _TAIL_LINES: dict[str, Any] = {
     "empirical": lambda m: "empirical quantile, the ceil(nq)-th smallest",
+    "age-weighted": lambda m: f"empirical quantile weighted by age (decay {m.tail.decay:g})",
     "normal": lambda m: "normal tail",
-    "gpd": lambda m: f"generalized Pareto tail on the top {m.tail.share:.0%} ({_excesses(m)} excesses)",
+    "t": lambda m: "Student t tail",
+    "skew-t": lambda m: "skewed Student t tail",
+    "gpd": lambda m: (
+        f"generalized Pareto tail on the top {m.tail.share:.0%} ({_excesses(m)} excesses)" + _BY[m.tail.fit]
+    ),
 }
 _SOURCES = {
     "none": "",
     "empirical": "",
+    "age-weighted": "Boudoukh, Richardson & Whitelaw (1998)",
     "normal": "",
-    "ewma": "RiskMetrics Technical Document (1996), decay 0.94",
+    "t": "Student t innovations: Bollerslev (1987)",
+    "skew-t": "Hansen (1994)",
+    "ml": "",
+    "zhang-stephens": "Zhang & Stephens (2009)",
+    "pwm": "Hosking & Wallis (1987)",
+    "ewma": "decay 0.94: the published value for daily data (1996)",
     "garch": "Bollerslev (1986); quasi maximum likelihood: Bollerslev & Wooldridge (1992)",
+    "gjr": "Glosten, Jagannathan & Runkle (1993)",
     "gpd": "McNeil & Frey (2000)",
 }
 
-_FILTER_OPTIONS = {"none": (), "ewma": ("decay",), "garch": ("mean", "start", "innovations", "recalibrate_days")}
-_TAIL_OPTIONS = {"empirical": (), "normal": (), "gpd": ("tail_share", "gpd_fit")}
-_CHOICES = {"mean": MEANS, "start": STARTS, "innovations": ("normal",), "gpd_fit": ("ml", "zhang-stephens")}
+_ESTIMATED_OPTIONS = ("mean", "start", "innovations", "recalibrate_days")
+_FILTER_OPTIONS = {"none": (), "ewma": ("decay",), "garch": _ESTIMATED_OPTIONS, "gjr": _ESTIMATED_OPTIONS}
+_TAIL_OPTIONS: dict[str, tuple[str, ...]] = {
+    "empirical": (), "age-weighted": ("age_decay",), "normal": (), "t": (), "skew-t": (),
+    "gpd": ("tail_share", "gpd_fit"),
+}  # fmt: skip
+_CHOICES = {"mean": MEANS, "start": STARTS, "innovations": INNOVATIONS, "gpd_fit": GPD_FITS}
 
 NAMED: dict[str, dict[str, str]] = {
     "historical": {"filter": "none", "tail": "empirical"},
@@ -102,6 +129,8 @@ NAMED: dict[str, dict[str, str]] = {
     "filtered-historical": {"filter": "garch", "tail": "empirical"},
     "unconditional-evt": {"filter": "none", "tail": "gpd"},
     "conditional-evt": {"filter": "garch", "tail": "gpd"},
+    "garch-t": {"filter": "garch", "innovations": "t", "tail": "t"},
+    "garch-skew-t": {"filter": "garch", "innovations": "skew-t", "tail": "skew-t"},
 }
 
 
@@ -174,22 +203,28 @@ def _filter(options: Mapping[str, Any], name: str, every_start: bool) -> FilterS
     _refuse_strangers(options, kind, _FILTER_OPTIONS, name)
     if kind == "ewma":
         return FilterSpec(kind, decay=float(options.get("decay", 0.94)))
-    if kind == "garch":
-        _pick(options, "innovations", "normal", _CHOICES["innovations"], name)
-        mean = _pick(options, "mean", "ar1", MEANS, name)
-        return FilterSpec(
-            kind, mean=mean, start=_pick(options, "start", STARTS[0], STARTS, name), every_start=every_start
-        )
+    if kind in ESTIMATED:
+        defaults = (("mean", "ar1"), ("start", STARTS[0]), ("innovations", INNOVATIONS[0]))
+        mean, start, law = (_pick(options, key, default, _CHOICES[key], name) for key, default in defaults)
+        return FilterSpec(kind, mean=mean, start=start, innovations=law, every_start=every_start)
     return FilterSpec(kind)
 
 
 def _tail(options: Mapping[str, Any], name: str) -> TailSpec:
     kind = _pick(options, "tail", "empirical", tuple(_TAIL_OPTIONS), name)
     _refuse_strangers(options, kind, _TAIL_OPTIONS, name)
+    if kind == "age-weighted":
+        return TailSpec(kind, decay=float(options.get("age_decay", 0.99)))
     if kind != "gpd":
         return TailSpec(kind)
     fit = _pick(options, "gpd_fit", "ml", _CHOICES["gpd_fit"], name)
     return TailSpec(kind, share=float(options.get("tail_share", 0.10)), fit=fit)
+
+
+def _estimated_line(model: Model, process: str) -> str:
+    f = model.filter
+    process = f"a {f.mean} mean and {process} volatility by {_BY_LAW[f.innovations]} (start {f.start})"
+    return f"last {model.window} losses through {process}"
 
 
 def _excesses(model: Model) -> int:

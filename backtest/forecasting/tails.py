@@ -4,12 +4,13 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.special import ndtr, ndtri
 
-from backtest.forecasting.filters import words
-from backtest.forecasting.models import TailSpec
-from backtest.kernels import gpd
-from backtest.kernels.order import empirical_rows, rank_rows
+from backtest.forecasting.age_weights import age_weights, weighted_rank
+from backtest.forecasting.filters import Filtered, words
+from backtest.forecasting.models import GPD_FITS, TailSpec
+from backtest.forecasting.tail_laws import law_pit, read_laws
+from backtest.kernels import gpd, student_fit
+from backtest.kernels.order import empirical_rows, rank_rows, weighted_rows
 from backtest.kernels.rolling import RUN_DAYS
 from backtest.records import FALLBACK
 
@@ -34,43 +35,66 @@ GPD_WORDS = {
     gpd.ZHANG_STEPHENS: f"{FALLBACK}: zhang-stephens",
     gpd.REFUSED: f"{FALLBACK}: empirical tail",
 }
+LAW_WORDS = {
+    student_fit.NU_CAP: "nu at its cap",
+    student_fit.NU_FLOOR: "nu at its floor",
+    student_fit.SKEW_BOUND: "skewness at its bound",
+    student_fit.AS_T: f"{FALLBACK}: t tail",
+    student_fit.AS_NORMAL: f"{FALLBACK}: normal tail",
+}
 
 
-def standardise(loss: np.ndarray, mean: np.ndarray, sigma: np.ndarray) -> np.ndarray:
-    """Return (loss - mean) / sigma; where sigma is zero, an infinity of the difference's sign, or zero."""
-    gap = loss - mean
-    with np.errstate(divide="ignore", invalid="ignore"):
-        return np.where(gap == 0.0, 0.0, gap / sigma)
-
-
-def _empirical(residuals: np.ndarray, spec: TailSpec, levels: np.ndarray, places: np.ndarray, standard: bool) -> Tailed:
-    n = len(residuals)
+def _empirical(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.ndarray) -> Tailed:
+    residuals = filtered.residuals
     quantile, shortfall = empirical_rows(residuals, levels)
-    return Tailed(
-        quantile, shortfall, np.full(n, "", dtype=object), np.full((n, 3), np.nan),
-        lambda values: rank_rows(residuals, values),
-    )  # fmt: skip
+    return _plain(quantile, shortfall, lambda values: rank_rows(residuals, values))
 
 
-def _normal(residuals: np.ndarray, spec: TailSpec, levels: np.ndarray, places: np.ndarray, standard: bool) -> Tailed:
-    """Read a normal law: standard behind a filter with normal innovations, else with fitted location and scale."""
+def _age_weighted(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.ndarray) -> Tailed:
+    residuals = filtered.residuals
+    weights = age_weights(residuals.shape[1], spec.decay)
+    quantile, shortfall = weighted_rows(residuals, weights, levels)
+    return _plain(quantile, shortfall, lambda values: weighted_rank(residuals, weights, values))
+
+
+def _normal(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.ndarray) -> Tailed:
+    """Read a normal law: standard behind a filter that standardises, else with fitted location and scale."""
+    residuals = filtered.residuals
     n = len(residuals)
-    centre = np.zeros(n) if standard else residuals.mean(axis=1)
-    spread = np.ones(n) if standard else residuals.std(axis=1)
-    z = ndtri(levels)
-    depth = np.exp(-0.5 * z * z) / np.sqrt(2 * np.pi) / (1 - levels)
-    at = centre[:, None] + spread[:, None] * z
-    return Tailed(
-        at, centre[:, None] + spread[:, None] * depth, np.full(n, "", dtype=object), np.full((n, 3), np.nan),
-        lambda values: ndtr(standardise(values, centre, spread)),
-    )  # fmt: skip
+    laws = np.tile([0.0, 1.0, np.inf, 0.0], (n, 1))
+    if not filtered.law:
+        laws[:, 0], laws[:, 1] = residuals.mean(axis=1), residuals.std(axis=1)
+    return _plain(*read_laws(laws, levels), lambda values: law_pit(laws, values))
 
 
-def _gpd(residuals: np.ndarray, spec: TailSpec, levels: np.ndarray, places: np.ndarray, standard: bool) -> Tailed:
+def _student(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.ndarray) -> Tailed:
+    """Read a t or skewed t law: the filter's own where its innovations are that law, else fitted to the residuals.
+
+    Behind a filter that standardises the shape alone is fitted, of a law with zero mean and unit variance.
+    """
+    given = filtered.shape if filtered.law == spec.kind else np.full((len(filtered.residuals), 2), np.nan)
+    laws, bits = student_fit.roll_student(
+        filtered.residuals, given, filtered.law != "", spec.kind == "skew-t", places, RUN_DAYS
+    )
+    quantile, shortfall = read_laws(laws, levels)
+    return _plain(quantile, shortfall, lambda values: law_pit(laws, values), words(bits, LAW_WORDS))
+
+
+def _plain(
+    quantile: np.ndarray,
+    shortfall: np.ndarray,
+    pit: Callable[[np.ndarray], np.ndarray],
+    status: np.ndarray | None = None,
+) -> Tailed:
+    n = len(quantile)
+    words_ = np.full(n, "", dtype=object) if status is None else status
+    return Tailed(quantile, shortfall, words_, np.full((n, 3), np.nan), pit)
+
+
+def _gpd(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.ndarray) -> Tailed:
+    residuals = filtered.residuals
     k = int(np.floor(spec.share * residuals.shape[1] + 1e-9))
-    quantile, shortfall, tail, bits = gpd.roll_gpd(residuals, levels, k, places, RUN_DAYS, spec.fit == "ml")
-    if spec.fit == "zhang-stephens":
-        bits = bits & ~gpd.ZHANG_STEPHENS
+    quantile, shortfall, tail, bits = gpd.roll_gpd(residuals, levels, k, places, RUN_DAYS, GPD_FITS.index(spec.fit))
     refused = (bits & gpd.REFUSED) > 0
     if refused.any():
         quantile[refused], shortfall[refused] = empirical_rows(residuals[refused], levels)
@@ -83,16 +107,20 @@ def _gpd(residuals: np.ndarray, spec: TailSpec, levels: np.ndarray, places: np.n
     return Tailed(quantile, shortfall, words(bits, GPD_WORDS), tail[:, :3], pit)
 
 
-TAILS: dict[str, Callable[[np.ndarray, TailSpec, np.ndarray, np.ndarray, bool], Tailed]] = {
+TAILS: dict[str, Callable[[Filtered, TailSpec, np.ndarray, np.ndarray], Tailed]] = {
     "empirical": _empirical,
+    "age-weighted": _age_weighted,
     "normal": _normal,
+    "t": _student,
+    "skew-t": _student,
     "gpd": _gpd,
 }
 
 
-def apply_tail(residuals: np.ndarray, spec: TailSpec, levels: np.ndarray, places: np.ndarray, standard: bool) -> Tailed:
-    """Roll a tail over the residuals (n, m) of one block and read it at ``levels`` (L).
+def apply_tail(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.ndarray) -> Tailed:
+    """Roll a tail over the residuals (n, m) of one filtered block and read it at ``levels`` (L).
 
-    ``standard`` says that the filter's innovations are standardised, so that a law of that name needs no fitting.
+    ``places``: weekday numbers (n). A sample that a tail cannot be fitted to is answered by a simpler one, with a
+    status: skewed t, then t, then normal; generalized Pareto by Zhang-Stephens, then empirical.
     """
-    return TAILS[spec.kind](residuals, spec, levels, places, standard)
+    return TAILS[spec.kind](filtered, spec, levels, places)

@@ -3,6 +3,9 @@
 Target days are business days; the past of a target is the last W losses known the evening before it. A restated value
 enters only once known, so a desk's history has epochs, each with its own series. "Before" is written here and nowhere
 else, and no model is handed anything later.
+
+Where each day's positions under past moves are known (P&L vectors), the past of a target is the last W scenarios before
+it; everything below a Plan is the same for both.
 """
 
 from dataclasses import dataclass
@@ -10,6 +13,8 @@ from itertools import pairwise
 
 import numpy as np
 import pandas as pd
+
+from backtest.records import DeskVectors
 
 BLOCK_DAYS = 256
 """Weekday numbers per block: the unit of warm starts, parallel work and memory."""
@@ -32,8 +37,9 @@ class Epoch:
 class Plan:
     """The target days of one desk and where the past of each lies.
 
-    targets, origins: datetime64[D] (n); places: weekday numbers (n); epoch: index into ``epochs`` (n); ends: position
-    after the last loss of the past in that epoch's series (n); window: W.
+    targets, origins: datetime64[D] (n), an origin being the last day whose P&L or market move is used; places: weekday
+    numbers (n); epoch: index into ``epochs`` (n); ends: position after the last loss of the past in that epoch's series
+    (n); window: W.
     """
 
     targets: np.ndarray
@@ -91,6 +97,27 @@ def plan(known: pd.DataFrame, calendar: np.ndarray, window: int) -> Plan:
     ends, epoch = ends.astype(np.int64), epoch.astype(np.int64)
     origins = np.array([epochs[e].days[end - 1] for e, end in zip(epoch, ends, strict=True)], dtype="datetime64[D]")
     return Plan(targets, origins, weekday_numbers(targets), epoch, ends, tuple(epochs), window)
+
+
+def plan_vectors(vectors: DeskVectors, calendar: np.ndarray, window: int) -> Plan:
+    """Pair each target day of one desk that has a vector with its last ``window`` scenarios before it, as losses.
+
+    Targets are the days of ``calendar`` whose vector has that many. The origin is the last scenario used: the last day
+    whose market move is in the past. Nothing else differs from a plan on P&L: fits may start from the day before, since
+    runs and blocks lie on the same fixed grid, and positions that change from day to day only make that start worse.
+    """
+    rows = np.flatnonzero(np.isin(vectors.days, calendar))
+    targets = vectors.days[rows]
+    before = [
+        np.searchsorted(vectors.scenarios[vectors.begins[i] : vectors.ends[i]], target, side="left")
+        for i, target in zip(rows, targets, strict=True)
+    ]
+    counts = np.array(before, dtype=np.int64)
+    enough = counts >= window
+    targets, ends = targets[enough], (vectors.begins[rows] + counts)[enough]
+    whole = Epoch(vectors.scenarios, -vectors.pnl)
+    none = np.zeros(len(targets), dtype=np.int64)
+    return Plan(targets, vectors.scenarios[ends - 1], weekday_numbers(targets), none, ends, (whole,), window)
 
 
 def _epoch(

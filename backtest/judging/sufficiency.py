@@ -12,6 +12,7 @@ from backtest.records import Result
 
 VAR_SOURCE = "quantile of loss/VaR with order-statistic limits (exact for independent days)"
 ES_SOURCE = "empirical ES of loss/ES, percentile bootstrap over days"
+_WRITTEN = {"var": "VaR", "es": "ES"}
 
 
 def multiple_results(
@@ -50,7 +51,7 @@ def _row(sample: Sample, measure: str, multiple: Multiple, source: str) -> Resul
         desk=sample.desk, model=sample.model, against="", pnl_kind=sample.kind, level=sample.level, first=first,
         last=last, days=multiple.days, exceptions=sample.exceptions, question="by how much",
         test=f"sufficient-{measure}-multiple", statistic=None, p_value=None, law=None, estimate=multiple.estimate,
-        low=multiple.low, high=multiple.high, direction=_direction(multiple, measure.upper()), could_see=None,
+        low=multiple.low, high=multiple.high, direction=_direction(multiple, _WRITTEN[measure]), could_see=None,
         decision="", decision_across_desks="", phrase="", note="; ".join(notes), source=source,
     )  # fmt: skip
 

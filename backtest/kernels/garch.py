@@ -1,188 +1,126 @@
-"""GARCH(1,1) with an AR(1) mean: Gaussian log-likelihood with exact gradient and Hessian in one pass, and the filter.
+"""The GARCH family rolled over the pasts of a block: arrays in, fresh arrays out."""
 
-Model of a past x[0..W-1] of losses: e_t = x_t - c - phi x_{t-1}; h_t = omega + alpha e_{t-1}^2 + beta h_{t-1}.
-Parameters in the order (c, phi, omega, alpha, beta). Before the first day both e^2 and h are b, the start-up
-variance: fixed, or moving with the parameters. Derivatives of h obey the same recursion as h
-(Fiorentini, Calzolari & Panattoni 1996, J. Applied Econometrics 11).
-"""
-
-import math
+from typing import NamedTuple
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled
+from backtest.kernels.ewma import roll_ewma
+from backtest.kernels.filtering import filter_rows
+from backtest.kernels.lanes import WIDTH
+from backtest.kernels.parameters import (
+    ALPHA,
+    AR1,
+    AR1_NO_INTERCEPT,
+    BETA,
+    COUNT,
+    ETA,
+    EWMA_75,
+    GAMMA,
+    LAMBDA,
+    OMEGA,
+    PHI,
+    UNCONDITIONAL,
+    C,
+)  # fmt: skip
+from backtest.kernels.past import new_pasts
+from backtest.kernels.rolling import CONSTANT, NOT_CONVERGED, RUN_DAYS, Fits, Member, Rows, fit_rows, new_chains
+from backtest.kernels.search import new_search
+from backtest.kernels.terms import aligned, new_pass
 
-C, PHI, OMEGA, ALPHA, BETA = range(5)
-SAMPLE_VARIANCE, MEAN_SQUARE, UNCONDITIONAL, EWMA_75 = range(4)
-"""Start-up rules; the first and the last give a b that stays fixed during a fit."""
-
-_LOG_2PI = math.log(2 * math.pi)
+LAST_GOOD, AS_EWMA = 64, 128
+"""Bits of the status of a fallback, beside those of ``rolling``."""
+FALLBACK_DECAY = 0.94
 
 
-@compiled
-def first_variance(
-    theta: np.ndarray, start: int, fixed: float, moments: np.ndarray, first: np.ndarray, second: np.ndarray
-) -> float:
-    """Return h of the first day and fill its derivatives: ``first`` (5) and ``second`` (5, 5).
+class Rolled(NamedTuple):
+    """The family rolled over n pasts of W losses, everything in units of the losses.
 
-    ``moments`` holds n, sum x, sum lag, sum x^2, sum lag^2, sum x*lag of the days with a residual.
+    parameters (n, COUNT), NaN where a past was not filtered by them; loglik (n), NaN where not fitted that day;
+    second_sigma (n) of a second optimum, NaN where there is none; mean, sigma (n) of the next day; status bits (n);
+    residuals (n, W - skip).
     """
-    c, phi, omega, alpha, beta = theta[C], theta[PHI], theta[OMEGA], theta[ALPHA], theta[BETA]
-    first[:] = 0.0
-    second[:, :] = 0.0
-    persistence = alpha + beta
-    if start == UNCONDITIONAL:
-        r = 1.0 / (1.0 - persistence)
-        first[OMEGA] = r
-        for i in (ALPHA, BETA):
-            first[i] = omega * r * r
-            second[OMEGA, i] = second[i, OMEGA] = r * r
-            for j in (ALPHA, BETA):
-                second[i, j] = 2.0 * omega * r * r * r
-        return float(omega * r)
-    b, b_c, b_phi = fixed, 0.0, 0.0
-    if start == MEAN_SQUARE:
-        n, sx, sl, sxx, sll, sxl = moments[0], moments[1], moments[2], moments[3], moments[4], moments[5]
-        b = (sxx + phi * phi * sll - 2 * phi * sxl - 2 * c * sx + 2 * c * phi * sl) / n + c * c
-        b_c = 2 * (c + (phi * sl - sx) / n)
-        b_phi = 2 * (phi * sll - sxl + c * sl) / n
-        second[C, C] = persistence * 2.0
-        second[C, PHI] = second[PHI, C] = persistence * 2.0 * sl / n
-        second[PHI, PHI] = persistence * 2.0 * sll / n
-    first[C], first[PHI], first[OMEGA], first[ALPHA], first[BETA] = persistence * b_c, persistence * b_phi, 1.0, b, b
-    for i in (ALPHA, BETA):
-        second[C, i] = second[i, C] = b_c
-        second[PHI, i] = second[i, PHI] = b_phi
-    return float(omega + persistence * b)
+
+    parameters: np.ndarray
+    loglik: np.ndarray
+    second_sigma: np.ndarray
+    mean: np.ndarray
+    sigma: np.ndarray
+    status: np.ndarray
+    residuals: np.ndarray
 
 
-@compiled
-def evaluate(
-    x: np.ndarray,
-    skip: int,
-    theta: np.ndarray,
-    start: int,
-    fixed: float,
-    moments: np.ndarray,
-    gradient: np.ndarray,
-    hessian: np.ndarray,
-) -> tuple[float, float]:
-    """Return the log-likelihood and the next day's variance; fill ``gradient`` (5) and ``hessian`` (5, 5).
+def member(mean: int, start: int, *, gjr: bool = False, shapes: int = 0, every_start: bool = False) -> Member:
+    """Return a member: ``shapes`` 0 (normal), 1 (Student t) or 2 (skewed t)."""
+    means = ([], [C], [C, PHI], [PHI])[mean]
+    free = [*means, OMEGA, ALPHA, *([GAMMA] if gjr else []), BETA, *[ETA, LAMBDA][:shapes]]
+    skip = 1 if start == EWMA_75 and mean in (AR1, AR1_NO_INTERCEPT) else 0
+    cap = 0.9999 if start == UNCONDITIONAL else 1.0
+    return Member(np.array(free, dtype=np.int64), mean, start, shapes, skip, cap, gjr, every_start)
 
-    ``skip`` days (0 or 1) at the front only condition the mean. The logarithm is taken once per 32 days, of a product.
+
+def roll(pasts: np.ndarray, places: np.ndarray, refit: np.ndarray, chosen: Member) -> Rolled:
+    """Fit where ``refit`` and filter each row of ``pasts`` (n, W), contiguous, in order of days.
+
+    ``places`` (n) are weekday numbers. A past that does not vary is forecast to repeat its last value, with sigma 0; a
+    fit that fails takes the last good parameters of its run of days, else EWMA on the same past; all by status.
     """
-    c, phi, omega, alpha, beta = theta[C], theta[PHI], theta[OMEGA], theta[ALPHA], theta[BETA]
-    d, s = gradient, hessian
-    h = first_variance(theta, start, fixed, moments, d, s)
-    hc, hp, ho, ha, hb = d[C], d[PHI], d[OMEGA], d[ALPHA], d[BETA]
-    hcc, hcp, hpp, hca, hcb = s[C, C], s[C, PHI], s[PHI, PHI], s[C, ALPHA], s[C, BETA]
-    hpa, hpb, hob, hab, hbb = s[PHI, ALPHA], s[PHI, BETA], s[OMEGA, BETA], s[ALPHA, BETA], s[BETA, BETA]
-    gc = gp = go = ga = gb = 0.0
-    scc = scp = sco = sca = scb = spp = spo = spa = spb = soo = soa = sob = saa = sab = sbb = 0.0
-    squares, logs, product = 0.0, 0.0, 1.0
-    lag = x[0] if skip else 0.0
-    for t in range(skip, x.size):
-        e = x[t] - c - phi * lag
-        r = 1.0 / h
-        er = e * r
-        q = e * er
-        squares += q
-        product *= h
-        if (t & 31) == 31:
-            logs += math.log(product)
-            product = 1.0
-        l1 = 0.5 * (q - 1.0) * r
-        l2 = (0.5 - q) * r * r
-        err = er * r
-        wc, wp = l2 * hc - err, l2 * hp - err * lag
-        gc += l1 * hc + er
-        gp += l1 * hp + er * lag
-        go += l1 * ho
-        ga += l1 * ha
-        gb += l1 * hb
-        scc += l1 * hcc + hc * (wc - err) - r
-        scp += l1 * hcp + hc * wp - (err * hp + r * lag)
-        spp += l1 * hpp + hp * (wp - err * lag) - r * lag * lag
-        sco += wc * ho
-        sca += l1 * hca + wc * ha
-        scb += l1 * hcb + wc * hb
-        spo += wp * ho
-        spa += l1 * hpa + wp * ha
-        spb += l1 * hpb + wp * hb
-        soo += l2 * ho * ho
-        soa += l2 * ho * ha
-        sob += l1 * hob + l2 * ho * hb
-        saa += l2 * ha * ha
-        sab += l1 * hab + l2 * ha * hb
-        sbb += l1 * hbb + l2 * hb * hb
-        e2_c, e2_p, a2 = -2.0 * e, -2.0 * e * lag, 2.0 * alpha
-        hcc = a2 + beta * hcc
-        hcp = a2 * lag + beta * hcp
-        hpp = a2 * lag * lag + beta * hpp
-        hca, hcb = e2_c + beta * hca, hc + beta * hcb
-        hpa, hpb = e2_p + beta * hpa, hp + beta * hpb
-        hob, hab, hbb = ho + beta * hob, ha + beta * hab, 2.0 * hb + beta * hbb
-        hc, hp = alpha * e2_c + beta * hc, alpha * e2_p + beta * hp
-        ho, ha, hb = 1.0 + beta * ho, e * e + beta * ha, h + beta * hb
-        h = omega + alpha * e * e + beta * h
-        lag = x[t]
-    if start == UNCONDITIONAL:
-        more = unconditional_extra(x, skip, theta)
-        soa += s[OMEGA, ALPHA] * more
-        saa += s[ALPHA, ALPHA] * more
-    d[C], d[PHI], d[OMEGA], d[ALPHA], d[BETA] = gc, gp, go, ga, gb
-    fill_symmetric(s, (scc, scp, sco, sca, scb, spp, spo, spa, spb, soo, soa, sob, saa, sab, sbb))
-    value = -0.5 * (logs + math.log(product) + squares + (x.size - skip) * _LOG_2PI)
-    return value, h
+    n, W = pasts.shape
+    rows = np.flatnonzero(refit)
+    edges = np.flatnonzero(np.diff(places[rows] // RUN_DAYS)) + 1
+    runs = Rows(rows, np.concatenate([[0], edges, [rows.size]]).astype(np.int64), places)
+    fits = Fits(np.full((n, COUNT), np.nan), np.full((n, 2), np.nan), np.zeros(n, np.int64))
+    lanes, work = new_pasts(W), new_pass()
+    flags = (chosen.mean in (AR1, AR1_NO_INTERCEPT), chosen.gjr, chosen.shapes > 0, chosen.shapes > 1)
+    fit_rows(pasts, lanes, work, new_search(), new_chains(), runs, chosen, fits, *(True if f else None for f in flags))
+    status = inherit(fits, refit, places)
+    ahead, residuals = np.full((n, 2), np.nan), np.empty((n, W - chosen.skip))
+    filtered = np.flatnonzero(status & (CONSTANT | AS_EWMA) == 0)
+    filter_rows(pasts, filtered, fits.parameters, lanes, work, aligned(W, WIDTH), chosen, residuals, ahead)
+    _others(pasts, chosen.skip, status, ahead, residuals)
+    unused = status & (CONSTANT | AS_EWMA) > 0
+    fits.parameters[unused] = np.nan
+    return Rolled(fits.parameters, fits.numbers[:, 0], fits.numbers[:, 1], ahead[:, 0], ahead[:, 1], status, residuals)
 
 
-@compiled
-def fill_symmetric(matrix: np.ndarray, upper: tuple[float, ...]) -> None:
-    """Write the upper triangle, row by row, into both triangles of a (5, 5) matrix."""
-    k = 0
-    for i in range(5):
-        for j in range(i, 5):
-            matrix[i, j] = matrix[j, i] = upper[k]
-            k += 1
+def inherit(fits: Fits, refit: np.ndarray, places: np.ndarray) -> np.ndarray:
+    """Give each row the parameters it is filtered by, in place, and return its status with the fallback taken."""
+    status = fits.status.copy()
+    run, good, used = -1, -1, -1
+    for i in range(len(status)):
+        if places[i] // RUN_DAYS != run:
+            run, good = places[i] // RUN_DAYS, -1
+        if refit[i]:
+            if status[i] & NOT_CONVERGED:
+                status[i] |= AS_EWMA if good < 0 else LAST_GOOD
+                used = good
+            elif not status[i] & CONSTANT:
+                good = used = i
+        elif used < 0:
+            status[i] = AS_EWMA
+        if used >= 0 and used != i:
+            fits.parameters[i] = fits.parameters[used]
+    return status
 
 
-@compiled
-def unconditional_extra(x: np.ndarray, skip: int, theta: np.ndarray) -> float:
-    """Return sum of dl_t/dh_t beta^(t-1): what the start-up omega/(1-alpha-beta) adds to two second derivatives."""
-    c, phi, omega, alpha, beta = theta[C], theta[PHI], theta[OMEGA], theta[ALPHA], theta[BETA]
-    h, decay, total = omega / (1.0 - alpha - beta), 1.0, 0.0
-    lag = x[0] if skip else 0.0
-    for t in range(skip, x.size):
-        e = x[t] - c - phi * lag
-        total += 0.5 * (e * e / h - 1.0) / h * decay
-        decay *= beta
-        if decay < 1e-30:
-            break
-        h = omega + alpha * e * e + beta * h
-        lag = x[t]
-    return total
+def _others(pasts: np.ndarray, skip: int, status: np.ndarray, ahead: np.ndarray, residuals: np.ndarray) -> None:
+    """Forecast what the family could not: constant pasts and, by EWMA, fits that failed."""
+    flat = np.isnan(ahead[:, 1]) & (status & AS_EWMA == 0)
+    status[flat] = CONSTANT
+    ahead[flat, 0], ahead[flat, 1], residuals[flat] = pasts[flat, -1], 0.0, 0.0
+    failed = status & AS_EWMA > 0
+    if failed.any():
+        sigma, full = roll_ewma(np.ascontiguousarray(pasts[failed]), FALLBACK_DECAY)
+        ahead[failed, 0], ahead[failed, 1], residuals[failed] = 0.0, sigma, full[:, skip:]
 
 
-@compiled
-def filter_past(
-    x: np.ndarray, skip: int, theta: np.ndarray, start: int, fixed: float, moments: np.ndarray, residuals: np.ndarray
-) -> tuple[float, float, float]:
-    """Fill ``residuals``, e_t / sqrt(h_t) of the days after ``skip``; return log-likelihood, next mean and variance."""
-    c, phi, omega, alpha, beta = theta[C], theta[PHI], theta[OMEGA], theta[ALPHA], theta[BETA]
-    first, second = np.empty(5), np.empty((5, 5))
-    h = first_variance(theta, start, fixed, moments, first, second)
-    squares, logs, product = 0.0, 0.0, 1.0
-    lag = x[0] if skip else 0.0
-    for t in range(skip, x.size):
-        e = x[t] - c - phi * lag
-        product *= h
-        if (t & 31) == 31:
-            logs += math.log(product)
-            product = 1.0
-        z = e / math.sqrt(h)
-        squares += z * z
-        residuals[t - skip] = z
-        h = omega + alpha * e * e + beta * h
-        lag = x[t]
-    value = -0.5 * (logs + math.log(product) + squares + (x.size - skip) * _LOG_2PI)
-    return value, c + phi * lag, h
+NAMES = {
+    C: "intercept",
+    PHI: "ar",
+    OMEGA: "omega",
+    ALPHA: "alpha",
+    GAMMA: "gamma",
+    BETA: "beta",
+    ETA: "eta",
+    LAMBDA: "lambda",
+}
+"""Parameters by their column names."""

@@ -1,4 +1,4 @@
-"""The generalized Pareto tail: maximum likelihood, the Zhang-Stephens estimator, quantile and shortfall.
+"""The generalized Pareto tail: three estimators, quantile and shortfall, the tail rolled over many samples.
 
 Excesses y > 0 over a threshold have survival (1 + xi y / beta)^(-1/xi). With theta = xi / beta the likelihood reduces
 to one dimension, xi(theta) = mean log(1 + theta y) (Davison 1984; Grimshaw 1993, Technometrics 35:185-191).
@@ -9,121 +9,164 @@ import math
 import numpy as np
 
 from backtest.kernels.compiled import compiled
-from backtest.kernels.order import largest
+from backtest.kernels.order import kth_largest, sort_ascending
 
 LOWEST_SHAPE, HIGHEST_SHAPE = -0.5, 0.95
 FEWEST, FEW = 20, 50
 """Fewer excesses than the first are refused, fewer than the second flagged."""
-ML, ZHANG_STEPHENS, FEW_EXCESSES, REFUSED = 0, 1, 2, 4
+BY_ML, BY_ZHANG_STEPHENS, BY_PWM = 0, 1, 2
+"""Estimators to ask for."""
+FITTED, ZHANG_STEPHENS, FEW_EXCESSES, REFUSED = 0, 1, 2, 4
 """Bits of the status of a tail."""
+
+_NEAR_ZERO, _LARGE, _SMALL = 0.02, 1e150, 1e-150
 
 
 @compiled
 def slope(y: np.ndarray, theta: float, moments: np.ndarray) -> tuple[float, float, float]:
-    """Return first and second derivative of the mean profile log-likelihood at ``theta``, and xi there."""
-    n = y.size
-    if abs(theta) * moments[0] < 1e-5:
-        m1, m2, m3 = moments[0], moments[1], moments[2]
-        a, b = m2 / (2.0 * m1), m3 / (3.0 * m1)
-        first = a - m1 + theta * (m2 - 2.0 * b + a * a)
-        return first, m2 - 2.0 * b + a * a, theta * m1
-    s0 = s1 = s2 = 0.0
-    for i in range(n):
-        w = 1.0 + theta * y[i]
-        r = y[i] / w
-        s0 += math.log1p(theta * y[i])
-        s1 += r
-        s2 += r * r
-    s0, s1, s2 = s0 / n, s1 / n, s2 / n
+    """Return first and second derivative of the mean profile log-likelihood at ``theta``, and xi there.
+
+    ``moments`` (3): the means of y, y^2, y^3. The logarithm is taken of products; near theta = 0 of D = product - 1,
+    which keeps its digits there.
+    """
+    m1, n = moments[0], y.size
+    if abs(theta) * m1 < 1e-5:
+        a, b = moments[1] / (2.0 * m1), moments[2] / (3.0 * m1)
+        bend = moments[1] - 2.0 * b + a * a
+        return a - m1 + theta * bend, bend, theta * m1
+    s0, s1, s2, product, excess = 0.0, 0.0, 0.0, 1.0, 0.0
+    if abs(theta) * m1 < _NEAR_ZERO:
+        for i in range(n):
+            r = y[i] / (1.0 + theta * y[i])
+            s1, s2 = s1 + r, s2 + r * r
+            excess += theta * y[i] * (1.0 + excess)
+            if (i & 15) == 15:
+                s0 += math.log1p(excess)
+                excess = 0.0
+    else:
+        for i in range(n):
+            w = 1.0 + theta * y[i]
+            r = y[i] / w
+            s1, s2 = s1 + r, s2 + r * r
+            product *= w
+            if product > _LARGE or product < _SMALL:
+                s0 += math.log(product)
+                product = 1.0
+    s0, s1, s2 = (s0 + math.log(product) + math.log1p(excess)) / n, s1 / n, s2 / n
     ratio = s1 / s0
     return 1.0 / theta - ratio - s1, s2 / s0 + ratio * ratio - 1.0 / (theta * theta) + s2, s0
 
 
 @compiled
-def bracket(y: np.ndarray, moments: np.ndarray, top: float) -> tuple[float, float]:
-    """Return an interval of theta that holds a maximum of the profile likelihood, or (NaN, NaN) where there is none."""
-    at_zero, _, _ = slope(y, 0.0, moments)
-    if at_zero >= 0.0:
-        low, high = 0.0, 1.0 / moments[0]
-        for _ in range(200):
-            if slope(y, high, moments)[0] < 0.0:
-                return low, high
-            low, high = high, 2.0 * high
-        return np.nan, np.nan
+def bracket(y: np.ndarray, guess: float, moments: np.ndarray, top: float) -> tuple[float, float, float]:
+    """Return an interval of theta that holds a maximum of the profile likelihood, and where to begin in it.
+
+    It lies on the side of zero to which the likelihood rises. NaN where there is none: it is below zero then, and the
+    likelihood does not fall again before it grows without bound at -1/top.
+    """
+    rise = slope(y, 0.0, moments)[0]
+    if rise >= 0.0:
+        return 0.0, np.inf, guess if guess > 0.0 else 2.0 * rise / moments[1]
+    if -1.0 / top < guess < 0.0 and slope(y, guess, moments)[0] > 0.0:
+        return guess, 0.0, guess
     high = 0.0
     for k in range(1, 60):
         low = -(1.0 - 0.5**k) / top
         if slope(y, low, moments)[0] > 0.0:
-            return low, high
+            return low, high, guess if low < guess < high else 0.5 * (low + high)
         high = low
-    return np.nan, np.nan
+    return np.nan, np.nan, np.nan
 
 
 @compiled
 def fit_ml(y: np.ndarray, guess: float) -> tuple[float, float, float]:
     """Return xi, beta and theta by maximum likelihood; NaN where no maximum with xi > -0.5 exists.
 
-    ``y`` (n) are positive excesses, ``guess`` a first theta or NaN. Newton on the profile, kept in a bracket.
+    ``y`` (n) are positive excesses, ``guess`` a first theta or NaN. Newton on the profile, kept in a bracket; without
+    a guess it begins at the estimate by moments.
     """
-    moments = np.zeros(3)
-    top = 0.0
+    moments, top = np.zeros(3), 0.0
     for i in range(y.size):
-        moments[0] += y[i]
-        moments[1] += y[i] * y[i]
-        moments[2] += y[i] * y[i] * y[i]
+        square = y[i] * y[i]
+        moments[0], moments[1], moments[2] = moments[0] + y[i], moments[1] + square, moments[2] + square * y[i]
         top = max(top, y[i])
-    moments /= y.size
-    low, high = bracket(y, moments, top)
+    for i in range(3):
+        moments[i] /= y.size
+    low, high, theta = bracket(y, guess, moments, top)
     if math.isnan(low):
         return np.nan, np.nan, np.nan
-    theta = guess if low < guess < high else 0.5 * (low + high)
-    xi = 0.0
-    for _ in range(200):
-        first, second, xi = slope(y, theta, moments)
+    for _ in range(300):
+        first, second, _ = slope(y, theta, moments)
         if first > 0.0:
             low = theta
         else:
             high = theta
         step = -first / second if second < 0.0 else np.inf
-        if not low < theta + step < high:
-            step = 0.5 * (low + high) - theta
-        theta += step
-        if abs(step) * moments[0] < 1e-12 or high - low < 1e-15 / top:
+        if abs(step) * moments[0] < 1e-8 or high - low < 1e-15 / top:
+            theta += step if abs(step) * moments[0] < 1e-8 else 0.0
             break
+        aim = theta + step
+        if high == np.inf:
+            aim = min(aim, 2.0 * theta + 1.0 / moments[0])
+        theta = aim if low < aim < high else 0.5 * (low + high)
     xi = slope(y, theta, moments)[2]
-    beta = moments[0] if abs(theta) * moments[0] < 1e-9 else xi / theta
     if not xi > LOWEST_SHAPE:
         return np.nan, np.nan, np.nan
-    return xi, beta, theta
+    return xi, moments[0] if abs(theta) * moments[0] < 1e-9 else xi / theta, theta
+
+
+@compiled
+def mean_log(y: np.ndarray, theta: float) -> float:
+    """Return the mean of log(1 + theta y): the logarithm of products, kept as product - 1 for the digits near zero."""
+    total, excess = 0.0, 0.0
+    for i in range(y.size):
+        excess += theta * y[i] * (1.0 + excess)
+        if excess < -0.5 or excess > _LARGE:
+            total += math.log1p(excess)
+            excess = 0.0
+    return (total + math.log1p(excess)) / y.size
 
 
 @compiled
 def fit_zhang_stephens(y: np.ndarray) -> tuple[float, float]:
-    """Return xi and beta by Zhang & Stephens (2009, Technometrics 51:316-325): never fails on positive excesses."""
-    ordered = np.sort(y)
-    n = ordered.size
-    quartile = ordered[max(int(n / 4.0 + 0.5), 1) - 1]
-    m = 20 + int(math.sqrt(n))
-    theta, value = np.empty(m), np.empty(m)
+    """Return xi and beta by Zhang & Stephens (2009, Technometrics 51:316-325): never fails on positive excesses.
+
+    Sorts ``y``.
+    """
+    sort_ascending(y)
+    n = y.size
+    quartile, m = y[max(int(n / 4.0 + 0.5), 1) - 1], 20 + int(math.sqrt(n))
+    theta, value, best = np.empty(m), np.empty(m), -np.inf
     for j in range(m):
-        theta[j] = 1.0 / ordered[n - 1] + (1.0 - math.sqrt(m / (j + 0.5))) / (3.0 * quartile)
-        k = 0.0
-        for i in range(n):
-            k -= math.log(1.0 - theta[j] * ordered[i])
-        k /= n
+        theta[j] = 1.0 / y[n - 1] + (1.0 - math.sqrt(m / (j + 0.5))) / (3.0 * quartile)
+        k = -mean_log(y, -theta[j])
         value[j] = n * (math.log(theta[j] / k) + k - 1.0) if abs(theta[j]) > 1e-300 else -np.inf
-    best = np.max(value)
+        best = max(best, value[j])
     total, weighted = 0.0, 0.0
     for j in range(m):
         weight = math.exp(value[j] - best)
         total += weight
         weighted += weight * theta[j]
     mean = weighted / total
-    xi = 0.0
-    for i in range(n):
-        xi += math.log(1.0 - mean * ordered[i])
-    xi /= n
+    xi = mean_log(y, -mean)
     return xi, -xi / mean
+
+
+@compiled
+def fit_pwm(y: np.ndarray) -> tuple[float, float]:
+    """Return xi and beta by probability-weighted moments (Hosking & Wallis 1987, Technometrics 29:339-349).
+
+    Plotting positions (j - 0.35)/n. NaN where the fit puts an excess beyond its end point. Sorts ``y``.
+    """
+    sort_ascending(y)
+    n, a0, a1 = y.size, 0.0, 0.0
+    for j in range(n):
+        a0 += y[j] / n
+        a1 += (1.0 - (j + 0.65) / n) * y[j] / n
+    xi, beta = 2.0 - a0 / (a0 - 2.0 * a1), 2.0 * a0 * a1 / (a0 - 2.0 * a1)
+    if not beta > 0.0 or not xi < 1.0 or xi * y[n - 1] <= -beta:
+        return np.nan, np.nan
+    return xi, beta
 
 
 @compiled
@@ -135,52 +178,74 @@ def quantile_and_shortfall(threshold: float, xi: float, beta: float, ratio: floa
     log = math.log(ratio)
     g = -log * (1.0 - 0.5 * xi * log) if abs(xi) < 1e-8 else math.expm1(-xi * log) / xi
     quantile = threshold + beta * g
-    return quantile, quantile + (beta + xi * beta * g) / (1.0 - xi) if xi < 1.0 else np.inf
+    return quantile, np.inf if xi >= 1.0 else quantile + (beta + xi * beta * g) / (1.0 - xi)
 
 
 @compiled
-def excesses(sample: np.ndarray, k: int) -> tuple[float, np.ndarray]:
-    """Return the (k+1)th largest value and the strict excesses over it, in the order of the sample."""
-    threshold = largest(sample, k + 1)[k]
-    y = np.empty(k)
-    n = 0
+def excesses(sample: np.ndarray, k: int, bound: float, work: np.ndarray) -> tuple[float, np.ndarray]:
+    """Return the (k+1)-th largest value and the strict excesses over it, in the order of the sample.
+
+    ``bound`` is a guess below that value or NaN: it saves time and changes nothing. ``work`` (2, m) is overwritten.
+    """
+    kept, moved, count = work[0], work[1], 0
     for i in range(sample.size):
-        if sample[i] > threshold:
-            y[n] = sample[i] - threshold
-            n += 1
-    return threshold, y[:n]
+        kept[count] = sample[i]
+        count += sample[i] > bound
+    if count <= k:
+        count = sample.size
+        for i in range(count):
+            kept[i] = sample[i]
+    for i in range(count):
+        moved[i] = kept[i]
+    threshold, n = kth_largest(moved[:count], k + 1), 0
+    for i in range(count):
+        moved[n] = kept[i] - threshold
+        n += kept[i] > threshold
+    return threshold, moved[:n]
+
+
+@compiled
+def fit(y: np.ndarray, by: int, guess: float) -> tuple[float, float, float, int]:
+    """Return xi, beta, theta (NaN unless by likelihood), status: Zhang-Stephens where the estimator has no answer."""
+    status = FEW_EXCESSES if y.size < FEW else FITTED
+    xi, beta, theta = np.nan, np.nan, np.nan
+    if by == BY_ML:
+        xi, beta, theta = fit_ml(y, guess)
+    elif by == BY_PWM:
+        xi, beta = fit_pwm(y)
+    if not xi <= HIGHEST_SHAPE:
+        xi, beta = fit_zhang_stephens(y)
+        status |= ZHANG_STEPHENS if by != BY_ZHANG_STEPHENS else 0
+    return xi, beta, theta, status if xi < 1.0 else REFUSED
 
 
 @compiled
 def roll_gpd(
-    samples: np.ndarray, levels: np.ndarray, k: int, places: np.ndarray, run_days: int, by_ml: bool
+    samples: np.ndarray, levels: np.ndarray, k: int, places: np.ndarray, run_days: int, by: int
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
     """Fit a tail to the top ``k`` of each row of ``samples`` (n, m) and read quantile and shortfall at ``levels``.
 
     Returns quantile (n, L), shortfall (n, L), tail (n, 4: xi, beta, threshold, share above it) and status bits (n);
-    REFUSED rows (fewer than FEWEST excesses, a level not beyond the threshold, or a shape of 1 or more by both
-    estimators, so that the shortfall would be infinite) hold NaN.
+    REFUSED rows (fewer than FEWEST excesses, a level not beyond the threshold, or a shape of 1 or more, so that the
+    shortfall would be infinite) hold NaN.
     """
     n, m = samples.shape
-    quantile, shortfall = np.full((n, levels.size), np.nan), np.full((n, levels.size), np.nan)
-    tail, status = np.full((n, 4), np.nan), np.zeros(n, np.int64)
-    guess = np.nan
+    quantile, shortfall, tail = np.empty((n, levels.size)), np.empty((n, levels.size)), np.empty((n, 4))
+    status, work = np.empty(n, np.int64), np.empty((2, m))
+    guess, bound, widest = np.nan, np.nan, 0.0
+    for level in levels:
+        widest = max(widest, 1.0 - level)
     for i in range(n):
         if i == 0 or places[i] // run_days != places[i - 1] // run_days:
             guess = np.nan
-        threshold, y = excesses(samples[i], k)
-        share = y.size / m
-        if y.size < FEWEST or not (1.0 - np.min(levels)) < share:
-            status[i] = REFUSED
-            continue
-        status[i] = FEW_EXCESSES if y.size < FEW else ML
-        xi, beta, guess = fit_ml(y, guess) if by_ml else (np.nan, np.nan, np.nan)
-        if not xi <= HIGHEST_SHAPE:
-            xi, beta = fit_zhang_stephens(y)
-            status[i] |= ZHANG_STEPHENS
-        if not xi < 1.0:
-            status[i] = REFUSED
-            continue
+        threshold, y = excesses(samples[i], k, bound, work)
+        share, xi, beta = y.size / m, np.nan, np.nan
+        status[i] = REFUSED
+        if y.size >= FEWEST and widest < share:
+            xi, beta, guess, status[i] = fit(y, by, guess)
+        if status[i] == REFUSED:
+            xi, beta, threshold, share, guess = np.nan, np.nan, np.nan, np.nan, np.nan
+        bound = threshold - 0.2 * beta
         tail[i, 0], tail[i, 1], tail[i, 2], tail[i, 3] = xi, beta, threshold, share
         for j in range(levels.size):
             quantile[i, j], shortfall[i, j] = quantile_and_shortfall(threshold, xi, beta, (1.0 - levels[j]) / share)

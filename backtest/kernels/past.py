@@ -1,4 +1,4 @@
-"""One past made ready for a fit: scaled, summed up, with the starting values of its mean and its start-up variance."""
+"""Pasts made ready for a fit, one a lane: scaled, summed up, with starting mean and start-up variance."""
 
 import math
 from typing import NamedTuple
@@ -6,112 +6,121 @@ from typing import NamedTuple
 import numpy as np
 
 from backtest.kernels.compiled import compiled
-from backtest.kernels.garch import EWMA_75, PHI, C
+from backtest.kernels.lanes import WIDTH
+from backtest.kernels.parameters import AR1, AR1_NO_INTERCEPT, CONSTANT_MEAN, EWMA_75
+from backtest.kernels.terms import aligned
 
-ZERO, CONSTANT_MEAN, AR1, AR1_NO_INTERCEPT = range(4)
-"""Means of a filter."""
+
+class Pasts(NamedTuple):
+    """Eight pasts and what a fit needs to know of them; reused from day to day."""
+
+    x: np.ndarray  # (W, lanes) scaled losses
+    moments: np.ndarray  # (lanes, 6): n, sum x, sum lag, sum x^2, sum lag^2, sum x*lag of the days with a residual
+    mean: np.ndarray  # (lanes, 2) least-squares c and phi
+    scale: np.ndarray  # (lanes,)
+    fixed: np.ndarray  # (lanes,) start-up variance where it does not move
+    variance: np.ndarray  # (lanes,) residual variance of least squares
 
 
-class Past(NamedTuple):
-    """A past and what a fit needs to know of it; reused from day to day."""
-
-    x: np.ndarray  # (W,) scaled losses
-    moments: np.ndarray  # n, sum x, sum lag, sum x^2, sum lag^2, sum x*lag of the days with a residual
-    mean: np.ndarray  # (2,) least-squares c and phi
-    numbers: np.ndarray  # scale, fixed start-up variance, residual variance of least squares
+def new_pasts(W: int) -> Pasts:
+    """Return eight empty pasts of ``W`` days; no lane is left at zero, so that idle ones compute harmlessly."""
+    pasts = Pasts(
+        aligned(W, WIDTH), np.ones((WIDTH, 6)), np.zeros((WIDTH, 2)), np.ones(WIDTH), np.ones(WIDTH), np.ones(WIDTH)
+    )
+    pasts.x[:] = 1.0
+    return pasts
 
 
 @compiled
-def new_past(W: int) -> Past:
-    """Return an empty past of ``W`` days."""
-    return Past(np.empty(W), np.empty(6), np.empty(2), np.empty(3))
+def deviation(losses: np.ndarray, average: float) -> float:
+    """Return the standard deviation of losses, zero where they do not vary enough to have one."""
+    largest, spread = 0.0, 0.0
+    for t in range(losses.size):
+        largest = max(largest, abs(losses[t]))
+    if not (largest > 0.0 and math.isfinite(largest)):
+        return 0.0
+    unit = 1.0 / largest
+    for t in range(losses.size):
+        gap = (losses[t] - average) * unit
+        spread += gap * gap
+    found = math.sqrt(spread / losses.size)
+    return largest * found if found > 1e-9 else 0.0
 
 
 @compiled
-def prepare(past: Past, losses: np.ndarray, mean_kind: int, start: int, skip: int) -> bool:
-    """Fill ``past`` from raw ``losses`` (W); return False where they do not vary enough to have a variance.
+def prepare(pasts: Pasts, lane: int, losses: np.ndarray, mean_kind: int, start: int, skip: int) -> bool:
+    """Fill a lane from raw ``losses`` (W); return False where they do not vary enough to have a variance.
 
     Losses are divided by their own standard deviation: every later comparison, cap and ridge then sees the same numbers
     whatever the unit of the P&L (a power of two near it would leave the search path, and the tenth digit, to the unit).
     """
-    W = losses.size
-    average, largest = 0.0, 0.0
-    for t in range(W):
+    average = 0.0
+    for t in range(losses.size):
         average += losses[t]
-        largest = max(largest, abs(losses[t]))
-    average /= W
-    spread = 0.0
-    for t in range(W):
-        spread += ((losses[t] - average) / largest) ** 2 if largest > 0.0 else 0.0
-    deviation = largest * math.sqrt(spread / W)
-    if not (deviation > 1e-9 * largest and math.isfinite(deviation)):
+    average /= losses.size
+    scale = deviation(losses, average)
+    if scale == 0.0:
         return False
-    scale = deviation
-    for t in range(W):
-        past.x[t] = losses[t] / scale
-    past.numbers[0] = scale
-    _sums(past, skip)
-    _least_squares(past, mean_kind)
-    has_constant = mean_kind in (CONSTANT_MEAN, AR1)
-    centre = average / scale if has_constant else 0.0
+    pasts.scale[lane] = scale
+    inverse = 1.0 / scale
+    for t in range(losses.size):
+        pasts.x[t, lane] = losses[t] * inverse
+    _sums(pasts, lane, losses, inverse, skip)
+    _least_squares(pasts, lane, mean_kind, losses[0] * inverse, skip)
     if start == EWMA_75:
-        past.numbers[1] = _weighted_start(past, skip)
+        pasts.fixed[lane] = _weighted_start(pasts, lane, skip)
     else:
-        total = 0.0
-        for t in range(W):
-            total += (past.x[t] - centre) ** 2
-        past.numbers[1] = total / W
+        centre = average * inverse
+        pasts.fixed[lane] = 1.0 if mean_kind in (CONSTANT_MEAN, AR1) else 1.0 + centre * centre
     return True
 
 
 @compiled
-def _sums(past: Past, skip: int) -> None:
-    m, x = past.moments, past.x
-    m[:] = 0.0
-    lag = x[0] if skip else 0.0
-    for t in range(skip, x.size):
-        m[0] += 1.0
-        m[1] += x[t]
-        m[2] += lag
-        m[3] += x[t] * x[t]
-        m[4] += lag * lag
-        m[5] += x[t] * lag
-        lag = x[t]
+def _sums(pasts: Pasts, lane: int, losses: np.ndarray, inverse: float, skip: int) -> None:
+    sx = sl = sxx = sll = sxl = 0.0
+    lag = losses[0] * inverse if skip else 0.0
+    for t in range(skip, losses.size):
+        now = losses[t] * inverse
+        sx += now
+        sl += lag
+        sxx += now * now
+        sll += lag * lag
+        sxl += now * lag
+        lag = now
+    m = pasts.moments
+    m[lane, 0] = losses.size - skip
+    m[lane, 1], m[lane, 2], m[lane, 3], m[lane, 4], m[lane, 5] = sx, sl, sxx, sll, sxl
 
 
 @compiled
-def _least_squares(past: Past, mean_kind: int) -> None:
-    """Fill the starting mean: regression of x_t on its lag over the days that have one."""
-    x, pairs = past.x, past.x.size - 1.0
-    sx = sl = sll = sxl = 0.0
-    for t in range(1, x.size):
-        sx += x[t]
-        sl += x[t - 1]
-        sll += x[t - 1] * x[t - 1]
-        sxl += x[t] * x[t - 1]
-    c, phi = 0.0, 0.0
+def _least_squares(pasts: Pasts, lane: int, mean_kind: int, first: float, skip: int) -> None:
+    """Fill the starting mean: regression of x_t on its lag over the days that have one, from the sums."""
+    m, c, phi = pasts.moments, 0.0, 0.0
+    n, mx, ml, mxx, mll, mxl = m[lane, 0], m[lane, 1], m[lane, 2], m[lane, 3], m[lane, 4], m[lane, 5]
+    pairs = n if skip else n - 1.0
+    sx = mx if skip else mx - first
     if mean_kind == CONSTANT_MEAN:
-        c = past.moments[1] / past.moments[0]
+        c = mx / n
     elif mean_kind == AR1:
-        phi = (sxl - sx * sl / pairs) / (sll - sl * sl / pairs)
-        c = (sx - phi * sl) / pairs
+        phi = (mxl - sx * ml / pairs) / (mll - ml * ml / pairs)
+        c = (sx - phi * ml) / pairs
     elif mean_kind == AR1_NO_INTERCEPT:
-        phi = sxl / sll
-    past.mean[C], past.mean[PHI] = c, phi
-    n, mx, ml, mxx, mll, mxl = past.moments
-    past.numbers[2] = (mxx + phi * phi * mll - 2 * phi * mxl - 2 * c * mx + 2 * c * phi * ml) / n + c * c
+        phi = mxl / mll
+    pasts.mean[lane, 0], pasts.mean[lane, 1] = c, phi
+    found = (mxx + phi * phi * mll - 2 * phi * mxl - 2 * c * mx + 2 * c * phi * ml) / n + c * c
+    pasts.variance[lane] = max(found, 1e-12)
 
 
 @compiled
-def _weighted_start(past: Past, skip: int) -> float:
+def _weighted_start(pasts: Pasts, lane: int, skip: int) -> float:
     """Return the weighted mean of the first 75 squared least-squares residuals, weights 0.94^i normalised."""
-    x, c, phi = past.x, past.mean[C], past.mean[PHI]
-    lag = x[0] if skip else 0.0
+    x, c, phi = pasts.x, pasts.mean[lane, 0], pasts.mean[lane, 1]
+    lag = x[0, lane] if skip else 0.0
     total, weights, weight = 0.0, 0.0, 1.0
-    for t in range(skip, min(skip + 75, x.size)):
-        e = x[t] - c - phi * lag
+    for t in range(skip, min(skip + 75, x.shape[0])):
+        e = x[t, lane] - c - phi * lag
         total += weight * e * e
         weights += weight
         weight *= 0.94
-        lag = x[t]
+        lag = x[t, lane]
     return total / weights

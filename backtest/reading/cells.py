@@ -105,6 +105,12 @@ def _stored_dates(table: Table, column: str, cells: pa.ChunkedArray) -> np.ndarr
 
 def names(table: Table, column: str, *, required: bool = True) -> pd.Series:
     """Return a column as text, kept as written. Refuses control characters and, where ``required``, empty cells."""
+    texts, codes = coded_names(table, column, required=required)
+    return pd.Series(pd.array(texts, dtype="str").take(codes), name=column)
+
+
+def coded_names(table: Table, column: str, *, required: bool = True) -> tuple[list[str], np.ndarray]:
+    """Return the different names of a column and, for each row, which of them it has; checked like ``names``."""
     cells = table.columns[column]
     if not _is_text(cells):
         if not (pa.types.is_integer(cells.type) or pa.types.is_null(cells.type)):
@@ -115,7 +121,7 @@ def names(table: Table, column: str, *, required: bool = True) -> pd.Series:
     _refuse_where(table, column, codes, [_has_control(t) for t in texts], "a control character in a name")
     if required:
         _refuse_where(table, column, codes, [not t.strip() for t in texts], "the name is empty")
-    return pd.Series(pd.array(texts, dtype="str").take(codes), name=column)
+    return texts, codes
 
 
 def choices(table: Table, column: str, allowed: Sequence[str], *, required: bool = True) -> pd.Series:

@@ -10,7 +10,7 @@ import pandas as pd
 from backtest.errors import DataError, TailmarkError
 from backtest.reading.business_days import days_of_data
 from backtest.reading.draft_evidence import Evidence, firm_row, look, pnl_sign, var_date
-from backtest.reading.draft_extract import Extract, look_at
+from backtest.reading.draft_extract import POSITION_ROLES, Extract, look_at
 from backtest.reading.draft_layout import Finding
 from backtest.reading.draft_mapping import map_pnl, map_reported, merged, rest, var_sign
 from backtest.reading.draft_names import says_loss
@@ -53,9 +53,17 @@ def _by_role(extracts: Sequence[Extract]) -> dict[str, Extract]:
     for extract in extracts:
         by_role.setdefault(extract.role, extract)
     by_role.pop("", None)
+    for role in _without_use(by_role):
+        del by_role[role]
     if "reported" not in by_role and "pnl" in by_role and by_role["pnl"].risk:
         by_role["reported"] = by_role["pnl"]
     return by_role
+
+
+def _without_use(by_role: dict[str, Extract]) -> list[str]:
+    """Return the roles that a study would refuse: factors or exposures alone, and both beside vectors."""
+    pair: list[str] = [role for role in ("factors", "exposures") if role in by_role]
+    return pair if len(pair) == 1 or "vectors" in by_role else []
 
 
 def _mapped(by_role: dict[str, Extract]) -> dict[str, list[Line]]:
@@ -66,7 +74,8 @@ def _mapped(by_role: dict[str, Extract]) -> dict[str, list[Line]]:
     if pnl is reported and reported is not None:
         columns, others = merged(columns, others), []
     layout = next((e.layout for e in by_role.values() if e.layout), {})
-    data = [_file(role, by_role.get(role)) for role in ("pnl", "reported", *SIDE_ROLES)]
+    roles = ("pnl", "reported", *SIDE_ROLES, *(role for role in POSITION_ROLES if role in by_role))
+    data = [_file(role, by_role.get(role)) for role in roles]
     return {
         "data": [*data, *(Line(key, finding) for key, finding in layout.items())],
         "data.columns": columns,
@@ -160,7 +169,7 @@ def _notes(
     for extract in extracts:
         if id(extract) not in used:
             notes.append(f"{extract.table.name} has no role here: not recognised, or another file has it")
-        elif extract.role not in SIDE_ROLES and (left := rest(extract, lines)):
+        elif extract.role not in (*SIDE_ROLES, *POSITION_ROLES) and (left := rest(extract, lines)):
             notes.append(f"{extract.table.name}: columns not mapped: {', '.join(left)}")
     notes += [_difference(layouts[0], other) for other in layouts[1:] if _difference(layouts[0], other)]
     return notes + ([refusal] if refusal else [])

@@ -12,8 +12,12 @@ from backtest.reading.cells import numbers
 from backtest.reading.csv_text import decode
 from backtest.reading.draft_layout import Finding, date_formats, find_decimal, find_encoding, find_separator
 from backtest.reading.draft_names import RiskColumn, key_of, pnl_kind, risk_column
+from backtest.reading.exposures import EXPOSURE_COLUMNS, FACTOR_COLUMNS
 from backtest.reading.tables import PARQUET_SUFFIXES, Layout, Table, file_bytes, read_table
+from backtest.reading.vectors import VECTOR_COLUMNS
 
+POSITION_ROLES = {"vectors": VECTOR_COLUMNS, "factors": FACTOR_COLUMNS, "exposures": EXPOSURE_COLUMNS}
+"""Tables of positions under past moves, known by columns of exactly these names."""
 SAMPLE = 4000
 """Distinct cells of a column that are looked at, evenly spread over those it has."""
 
@@ -30,8 +34,11 @@ class Extract:
 
     @property
     def role(self) -> str:
-        """Which table this is, by the columns found: P&L comes first, since it may hold the forecasts too."""
+        """Which table this is, by the columns found: P&L comes before forecasts, since it may hold them too."""
         header = set(self.table.columns)
+        own = next((role for role, columns in POSITION_ROLES.items() if set(columns) <= header), None)
+        if own is not None:
+            return own
         if self.pnl:
             return "pnl"
         if self.risk:

@@ -1,10 +1,13 @@
-"""P&L handed over in memory: a long table or a Series, checked like a file."""
+"""P&L and vectors handed over in memory, checked like files."""
+
+from collections.abc import Iterable
 
 import numpy as np
 import pandas as pd
 
-from backtest.errors import DataError
-from backtest.records import DATE_DTYPE
+from backtest.errors import DataError, near_miss
+from backtest.reading.vectors import VECTOR_COLUMNS, by_desk
+from backtest.records import DATE_DTYPE, DeskVectors
 
 _NUMBERS = ("hypothetical", "actual", "risk_theoretical", "risk_theoretical_aligned")
 
@@ -39,6 +42,36 @@ def pnl_table(pnl: pd.DataFrame | pd.Series) -> pd.DataFrame:
     return table
 
 
+def vectors_table(vectors: pd.DataFrame, desks: Iterable[str]) -> dict[str, DeskVectors]:
+    """Return the vectors of a long table ``date, desk, scenario, pnl`` by desk; ``date`` is the target day.
+
+    Raises DataError (row, column, value) for a missing column, what is no date or finite number, a desk that is not
+    among ``desks``, a scenario on or after its date, a row that stands twice, an empty table.
+    """
+    for column in VECTOR_COLUMNS:
+        if column not in vectors:
+            remedy = "The table needs date, desk, scenario and pnl."
+            raise DataError("a column is missing", value=column, place="vectors", remedy=remedy)
+    if vectors.empty:
+        raise DataError("the table has no rows", place="vectors", remedy="Hand over at least one vector.")
+    codes, found = pd.factorize(vectors["desk"].astype(str))
+    for name in sorted(set(found) - set(desks)):
+        raise DataError("an unknown desk", value=name, place="vectors, desk", remedy=near_miss(name, desks))
+    days, scenarios = (
+        _dates(vectors[column], column, "vectors").astype("datetime64[D]") for column in ("date", "scenario")
+    )
+    pnl = _numbers(vectors["pnl"], "pnl", "vectors")
+    if np.isnan(pnl).any():
+        place = f"vectors, row {int(np.argmax(np.isnan(pnl)))}, pnl"
+        raise DataError("a scenario has no P&L", place=place, remedy="Supply the value, or take the row out.")
+    names = [str(name) for name in found]
+    return by_desk(names, codes, days, scenarios, pnl, _row_of_vectors, as_of_dated=False)
+
+
+def _row_of_vectors(row: int, column: str) -> str:
+    return f"vectors, row {row}, {column}"
+
+
 def _known_on(pnl: pd.DataFrame, dates: pd.Series) -> np.ndarray:
     if "known_on" not in pnl:
         return dates.to_numpy()
@@ -50,23 +83,30 @@ def _known_on(pnl: pd.DataFrame, dates: pd.Series) -> np.ndarray:
     return known
 
 
-def _dates(column: pd.Series, name: str) -> np.ndarray:
+def _dates(column: pd.Series, name: str, table: str = "pnl") -> np.ndarray:
+    remedy = "Hand over datetime64 values, or text such as 2025-12-31."
+    if pd.api.types.is_numeric_dtype(column):  # pandas would take a number for nanoseconds since 1970
+        raise DataError("a number is no date", value=column.iloc[0], place=f"{table}, {name}", remedy=remedy)
     try:
-        dates = pd.to_datetime(column)
+        dates = pd.to_datetime(column, format="ISO8601", errors="coerce")
     except (ValueError, TypeError) as error:
-        raise DataError(f"not a date: {error}", place=f"pnl, {name}", remedy="Hand over datetime64 values.") from None
+        raise DataError(f"not a date: {error}", place=f"{table}, {name}", remedy=remedy) from None
+    unread = (dates.isna() & column.notna()).to_numpy()
+    if unread.any():
+        row = int(np.argmax(unread))
+        raise DataError("not a date", value=column.iloc[row], place=f"{table}, row {row}, {name}", remedy=remedy)
     if dates.isna().any():
-        raise DataError("a date is missing", place=f"pnl, row {int(np.argmax(dates.isna()))}, {name}")
+        raise DataError("a date is missing", place=f"{table}, row {int(np.argmax(dates.isna()))}, {name}")
     if dates.dt.tz is not None:
-        raise DataError("dates carry a time zone", place=f"pnl, {name}", remedy="Use tz_localize(None).")
+        raise DataError("dates carry a time zone", place=f"{table}, {name}", remedy="Use tz_localize(None).")
     return dates.to_numpy().astype("datetime64[D]").astype(DATE_DTYPE)
 
 
-def _numbers(column: pd.Series, name: str) -> np.ndarray:
+def _numbers(column: pd.Series, name: str, table: str = "pnl") -> np.ndarray:
     try:
         values = column.to_numpy(dtype=np.float64, na_value=np.nan)
     except (ValueError, TypeError) as error:
-        raise DataError(f"not a number: {error}", place=f"pnl, {name}", remedy="Hand over floats.") from None
+        raise DataError(f"not a number: {error}", place=f"{table}, {name}", remedy="Hand over floats.") from None
     if np.isinf(values).any():
-        raise DataError("an infinite value", place=f"pnl, row {int(np.argmax(np.isinf(values)))}, {name}")
+        raise DataError("an infinite value", place=f"{table}, row {int(np.argmax(np.isinf(values)))}, {name}")
     return values

@@ -1,11 +1,13 @@
 """Is there enough history: which desks reach the window, and what is said of those that do not."""
 
+from collections.abc import Mapping
+
 import numpy as np
 import pandas as pd
 
 from backtest.errors import DataError
 from backtest.reading.remarks import desk_remark
-from backtest.records import Remark, latest_known
+from backtest.records import PNL_KINDS, VECTORS, DeskVectors, Remark, latest_known
 from backtest.study import Study
 
 YEAR = 250
@@ -18,9 +20,18 @@ def windows_needed(study: Study) -> list[int]:
     return sorted(named | {model.window or study.forecast.window for model in study.forecast.model})
 
 
-def refuse_nothing_to_do(study: Study, pnl: pd.DataFrame, reported: pd.DataFrame, calendar: np.ndarray) -> None:
+def refuse_nothing_to_do(
+    study: Study,
+    pnl: pd.DataFrame,
+    reported: pd.DataFrame,
+    calendar: np.ndarray,
+    vectors: Mapping[str, DeskVectors] | None = None,
+) -> None:
     """Refuse data in which no desk reaches the shortest window and no reported forecast can be judged."""
     kind = study.forecast.learn_from
+    if kind == VECTORS:
+        _refuse_short_vectors(study, vectors or {}, len(reported))
+        return
     if kind not in pnl:
         remedy = f"Supply the column (data.columns.{kind}), or change forecast.learn_from."
         rule = f"forecast.learn_from = {kind!r} needs that P&L"
@@ -41,6 +52,18 @@ def refuse_nothing_to_do(study: Study, pnl: pd.DataFrame, reported: pd.DataFrame
     )
 
 
+def _refuse_short_vectors(study: Study, vectors: Mapping[str, DeskVectors], reported: int) -> None:
+    windows, longest = windows_needed(study), max((v.counts.max(initial=0) for v in vectors.values()), default=0)
+    if not reported and not (windows and longest >= windows[0]):
+        raise DataError(
+            "no P&L vector reaches the shortest window and nothing reported is there to judge",
+            rule="a target day needs a vector of as many scenarios as the window",
+            value=f"{longest} scenarios, windows {', '.join(map(str, windows)) or 'none'}",
+            place=study.data.vectors or study.data.exposures or "data.vectors",
+            remedy="Shorten forecast.window, supply longer vectors, or supply data.reported.",
+        )
+
+
 def known_before_last(pnl: pd.DataFrame, kind: str, calendar: np.ndarray) -> pd.Series:
     """Return per desk how many known losses lie before the last business day: what its last target can learn from."""
     rows = latest_known(pnl, calendar[-1])
@@ -51,7 +74,9 @@ def known_before_last(pnl: pd.DataFrame, kind: str, calendar: np.ndarray) -> pd.
 
 def short_histories(study: Study, pnl: pd.DataFrame, reported: pd.DataFrame, calendar: np.ndarray) -> list[Remark]:
     """Remark, per desk, on each window not reached and on less than a year of days, as "n of 250"."""
-    kind, judged = study.forecast.learn_from, set(reported["desk"].unique())
+    learn_from, judged = study.forecast.learn_from, set(reported["desk"].unique())
+    kind = PNL_KINDS[0] if learn_from == VECTORS else learn_from
+    windows = [] if learn_from == VECTORS else windows_needed(study)  # vectors are remarked on in vector_days.py
     reach = known_before_last(pnl, kind, calendar)
     rows = latest_known(pnl, calendar[-1])
     days = rows[rows[kind].notna()].groupby("desk", sort=True)["date"].agg(["min", "max", "size"])
@@ -60,7 +85,7 @@ def short_histories(study: Study, pnl: pd.DataFrame, reported: pd.DataFrame, cal
         also = "; its reported forecasts are judged from day one all the same" if desk in judged else ""
         texts = [
             ("short-history", int(reach[desk]), f"{reach[desk]} of {window} days before its last: no forecast of ours")
-            for window in windows_needed(study)
+            for window in windows
             if reach[desk] < window
         ]
         if count < YEAR:

@@ -26,6 +26,7 @@ from backtest.reading.desks import (
     refuse_unknown_firm,
     remark_desks,
 )
+from backtest.reading.exposures import EXPOSURE_COLUMNS, FACTOR_COLUMNS, build_vectors, read_factors
 from backtest.reading.history import refuse_nothing_to_do, short_histories
 from backtest.reading.pnl import read_pnl
 from backtest.reading.remarks import in_order, per_desk
@@ -34,10 +35,12 @@ from backtest.reading.shift import shifted
 from backtest.reading.stretches import stale_pnl, stale_var
 from backtest.reading.tables import Table, layout_of, read_table
 from backtest.reading.totals import not_adding_up
-from backtest.records import Inputs, Remark, latest_known
+from backtest.reading.vector_days import on_target_days, refuse_without_vectors, vector_remarks
+from backtest.reading.vectors import VECTOR_COLUMNS, read_vectors
+from backtest.records import DeskVectors, Inputs, Remark, latest_known
 from backtest.study import Study
 
-ROLES = ("pnl", "reported", "desks", "changes", "calendar")
+ROLES = ("pnl", "reported", "desks", "changes", "calendar", "vectors", "factors", "exposures")
 ROWS = {"pnl": "P&L rows", "reported": "reported forecasts", "changes": "changes"}
 
 
@@ -87,8 +90,10 @@ def read_inputs(study: Study) -> Inputs:
     if supplied is not None:
         refuse_short_calendar(supplied, pnl, gathered.name("calendar"))
     calendar = within(known_days, pnl["date"].min(), as_of)
+    vectors = _vectors(gathered, desks, known_days, as_of)
     inputs = _assemble(gathered, as_of, calendar, pnl, reported, desks, changes)
-    refuse_nothing_to_do(study, inputs.pnl, inputs.reported, calendar)
+    inputs = dataclasses.replace(inputs, vectors=vectors)
+    refuse_nothing_to_do(study, inputs.pnl, inputs.reported, calendar, vectors)
     remarks = [*gathered.remarks, *_unnamed(gathered), *_look(gathered, inputs, supplied)]
     return dataclasses.replace(inputs, remarks=in_order(remarks))
 
@@ -97,6 +102,7 @@ def _open(study: Study) -> dict[str, Table]:
     """Read every file once; P&L and reported forecasts may be the same one."""
     data, layout = study.data, layout_of(study.data)
     _refuse_unread_mapping(study)
+    refuse_without_vectors(study)
     tables: dict[str, Table] = {}
     by_name: dict[str, Table] = {}
     for role in ROLES:
@@ -164,6 +170,33 @@ def _changes(gathered: _Gathered, desks: pd.DataFrame) -> pd.DataFrame:
     gathered.use("changes", used)
     refuse_unknown(changes, table, desks["desk"], "a change names a desk of the data")
     return changes
+
+
+def _vectors(
+    gathered: _Gathered, desks: pd.DataFrame, days: np.ndarray, as_of: np.datetime64
+) -> dict[str, DeskVectors]:
+    """Return the vectors supplied, or built from factors and exposures, under their target days."""
+    data, tables = gathered.study.data, gathered.tables
+    as_of_dated, known = data.var_date == "as-of", list(desks["desk"])
+    if "vectors" in tables:
+        vectors = read_vectors(tables["vectors"], data, known)
+        gathered.use("vectors", set(VECTOR_COLUMNS))
+    elif "factors" in tables:
+        factors = read_factors(tables["factors"])
+        vectors = build_vectors(tables["exposures"], factors, known, as_of_dated=as_of_dated)
+        gathered.use("factors", set(FACTOR_COLUMNS))
+        gathered.use("exposures", set(EXPOSURE_COLUMNS))
+    else:
+        return {}
+    name = gathered.name(_vectors_role(gathered))
+    vectors, remarks = on_target_days(vectors, days, as_of, name, as_of_dated=as_of_dated)
+    gathered.remarks += remarks
+    return vectors
+
+
+def _vectors_role(gathered: _Gathered) -> str:
+    """Return the role of the file whose dates are those of the vectors."""
+    return "exposures" if "exposures" in gathered.tables else "vectors"
 
 
 def _up_to(
@@ -241,4 +274,5 @@ def _look(gathered: _Gathered, inputs: Inputs, supplied: np.ndarray | None) -> l
         *shifted(latest, reported, calendar, of_reported),
         *not_adding_up(latest, desks, gathered.study.review.firm, of_pnl),
         *short_histories(gathered.study, pnl, reported, calendar),
+        *vector_remarks(gathered.study, inputs, gathered.name(_vectors_role(gathered))),
     ]

@@ -217,7 +217,22 @@ def _desk_facts(book: Book, desk: str, scope: Scope | None) -> tuple[Fact, ...]:
         Fact("Judged", span_words(scope.span) if scope else "not tested: no day with both a forecast and a P&L")
     )
     facts.append(Fact("Challengers", say.listed(made, 8) if made else "none: not forecast on this desk"))
-    return tuple(facts)
+    return (*facts, *_past_fact(book, desk))
+
+
+def _past_fact(book: Book, desk: str) -> tuple[Fact, ...]:
+    """Return which past the challengers of a desk learnt from, where the record says so."""
+    kept = book.mapping("desks").get(desk)
+    if not isinstance(kept, Mapping) or not kept.get("learn_from"):
+        return ()
+    if "vectors" not in kept:
+        return (Fact("Challengers learn from", f"past {kept['learn_from']} P&L, as the positions were then"),)
+    days, (least, most) = int(kept["vectors"]), kept["scenarios"]
+    if not days:
+        return (Fact("Challengers learn from", "P&L vectors, of which this desk has none"),)
+    each = say.whole(most) if least == most else f"{say.whole(least)} to {say.whole(most)}"
+    words = f"P&L vectors: each day's positions under {each} past market moves, on {say.plural(days, 'day')}"
+    return (Fact("Challengers learn from", words),)
 
 
 def _figure(book: Book, desk: str, level: float, anchor: str) -> FigureView | None:

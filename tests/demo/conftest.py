@@ -1,5 +1,8 @@
 """The demo's files as plain tables: read with pandas alone, so that these tests do not lean on the package."""
 
+import os
+import subprocess
+import sys
 from pathlib import Path
 
 import numpy as np
@@ -48,6 +51,15 @@ class Tables:
 @pytest.fixture(scope="session")
 def demo() -> Tables:
     return Tables(FOLDER)
+
+
+@pytest.fixture(scope="session")
+def remade(demo, tmp_path_factory) -> Path:
+    """Return a folder into which the script wrote the tables again."""
+    target = tmp_path_factory.mktemp("remade")
+    command = [sys.executable, str(demo.folder / "make.py"), str(target)]
+    subprocess.run(command, check=True, env=os.environ | {"PYTHONDONTWRITEBYTECODE": "1"})
+    return target
 
 
 @pytest.fixture

@@ -1,10 +1,5 @@
 """The demo's files: complete, adding up, read by the study form, and reproduced by the script."""
 
-import os
-import subprocess
-import sys
-from pathlib import Path
-
 import numpy as np
 import pandas as pd
 import pyarrow.parquet as pq
@@ -114,14 +109,6 @@ def test_expected_shortfall_is_beyond_var_everywhere(demo):
 
 def test_folder_is_under_four_megabytes(demo):
     assert sum(f.stat().st_size for f in demo.folder.iterdir() if f.is_file()) < 4e6
-
-
-@pytest.fixture(scope="module")
-def remade(demo, tmp_path_factory) -> Path:
-    target = tmp_path_factory.mktemp("remade")
-    command = [sys.executable, str(demo.folder / "make.py"), str(target)]
-    subprocess.run(command, check=True, env=os.environ | {"PYTHONDONTWRITEBYTECODE": "1"})
-    return target
 
 
 @pytest.mark.slow

@@ -7,7 +7,7 @@ import pandas as pd
 import pytest
 
 import backtest
-from backtest.forecasting.models import MEANS, STARTS
+from backtest.forecasting.models import GPD_FITS, MEANS, STARTS
 from backtest.records import FALLBACK, FORECAST_COLUMNS
 from tests.reference.datasets import garch_t, pnl_series
 
@@ -17,12 +17,21 @@ FILTERS = [
     *({"filter": "garch", "mean": mean} for mean in MEANS),
     *({"filter": "garch", "start": start} for start in STARTS[1:]),
 ]
-TAILS = [{"tail": "empirical"}, {"tail": "normal"}, {"tail": "gpd"}, {"tail": "gpd", "gpd_fit": "zhang-stephens"}]
-PAIRS = [{"name": " ".join([*f.values(), *t.values()]), **f, **t} for f in FILTERS for t in TAILS]
+TAILS = [
+    {"tail": "empirical"},
+    {"tail": "age-weighted"},
+    {"tail": "normal"},
+    {"tail": "t"},
+    {"tail": "skew-t"},
+    *({"tail": "gpd", "gpd_fit": fit} for fit in GPD_FITS),
+]
+EVERY = [{"name": " ".join([*f.values(), *t.values()]), **f, **t} for f in FILTERS for t in TAILS]
+SOME = [pair for i, pair in enumerate(EVERY) if i < 2 * len(TAILS) or i % (len(TAILS) + 1) in (0, 3)]
+"""Every tail without a filter and behind the first that has one; every filter with a few tails."""
 WINDOW, DAYS, LEVELS = 300, 340, (0.975, 0.99)
 
 
-def forecast(losses, models=PAIRS, window=WINDOW, **options) -> pd.DataFrame:
+def forecast(losses, models=SOME, window=WINDOW, **options) -> pd.DataFrame:
     return backtest.forecast(pnl_series(losses), models=models, levels=LEVELS, window=window, **options)
 
 
@@ -31,18 +40,23 @@ def losses() -> np.ndarray:
     return garch_t(DAYS, 7)[0]
 
 
+@pytest.fixture(scope="module", params=[SOME, pytest.param(EVERY, marks=pytest.mark.slow)], ids=["some", "every"])
+def pairs(request) -> list[dict[str, str]]:
+    return request.param
+
+
 @pytest.fixture(scope="module")
-def made(losses) -> pd.DataFrame:
-    return forecast(losses)
+def made(losses, pairs) -> pd.DataFrame:
+    return forecast(losses, pairs)
 
 
 def by_model(table: pd.DataFrame, column: str) -> pd.DataFrame:
     return table.pivot_table(index=["date", "level"], columns="model", values=column)
 
 
-def test_every_pair_has_a_row_a_day_and_level(made):
+def test_every_pair_has_a_row_a_day_and_level(made, pairs):
     assert tuple(made.columns) == FORECAST_COLUMNS
-    assert len(made) == len(PAIRS) * (DAYS - WINDOW) * len(LEVELS)
+    assert len(made) == len(pairs) * (DAYS - WINDOW) * len(LEVELS)
     assert not made.duplicated(["date", "model", "level"]).any()
 
 
@@ -66,21 +80,21 @@ def test_the_pit_exceeds_the_level_only_on_an_exception(made, losses):
     loss = -pnl_series(losses)
     hit = loss.reindex(made["date"]).to_numpy() > made["var"].to_numpy()
     assert hit[(made["pit_hypothetical"] > made["level"]).to_numpy()].all()
-    continuous = made["model"].str.contains("normal").to_numpy()
+    continuous = made["model"].str.contains(r"normal$| t$|skew-t$").to_numpy()
     assert (made["pit_hypothetical"] > made["level"]).to_numpy()[continuous & hit].all()
 
 
 @pytest.mark.parametrize("c", [1e-6, 0.01, 3.0, 1e9])
-def test_the_unit_of_the_pnl_changes_nothing_but_money(made, losses, c):
-    scaled = forecast(c * losses)
+def test_the_unit_of_the_pnl_changes_nothing_but_money(made, losses, pairs, c):
+    scaled = forecast(c * losses, pairs)
     for column in ("var", "es"):
         np.testing.assert_allclose(scaled[column], c * made[column], rtol=1e-9)
     np.testing.assert_allclose(scaled["pit_hypothetical"], made["pit_hypothetical"], atol=1e-9)
     assert (scaled["status"] == made["status"]).all()
 
 
-def test_the_number_of_workers_changes_nothing(made, losses):
-    pd.testing.assert_frame_equal(forecast(losses, workers=2), made)
+def test_the_number_of_workers_changes_nothing(made, losses, pairs):
+    pd.testing.assert_frame_equal(forecast(losses, pairs, workers=2), made)
 
 
 def test_the_order_of_rows_and_desks_changes_nothing(losses):
@@ -118,9 +132,9 @@ HARD = {
 
 
 @pytest.mark.parametrize("case", HARD)
-def test_hard_pasts_get_a_forecast_and_a_status(losses, case):
-    table = forecast(HARD[case](losses))
-    assert len(table) == len(PAIRS) * (DAYS - WINDOW) * len(LEVELS)
+def test_hard_pasts_get_a_forecast_and_a_status(losses, pairs, case):
+    table = forecast(HARD[case](losses), pairs)
+    assert len(table) == len(pairs) * (DAYS - WINDOW) * len(LEVELS)
     assert np.isfinite(table[["var", "es", "pit_hypothetical"]]).all(axis=None)
     assert (table["es"] >= table["var"] - 1e-12 * table["var"].abs()).all()
     assert (table["status"] != "").all()

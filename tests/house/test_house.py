@@ -13,8 +13,12 @@ FILES = sorted(PACKAGE.rglob("*.py"))
 
 LONGEST_FILE = 300
 LONGEST_FUNCTION = 40
-RAISED = {"backtest/kernels/garch.py:evaluate": 75}
-"""Raised caps, each one reviewed number: the likelihood pass is one loop over one day's derivatives."""
+RAISED: dict[str, int] = {}
+"""Raised caps, each one reviewed number, by "path:function"."""
+WRITTEN = {"backtest/kernels/passes.py"}
+"""Files written by a script that stands beside them: outside the caps, held to the script by a test."""
+COMPILER = {"compiled.py", "lanes.py"}
+"""The kernel files that may speak to numba: the one that compiles and caches, and the vector type."""
 
 # room -> what it may import inside the package
 INSIDE = {
@@ -102,10 +106,10 @@ def test_a_room_imports_only_what_its_floor_allows(path):
             assert any(module == a or module.startswith(f"{a}.") for a in allowed), f"{mine} may not import {module}"
 
 
-def test_only_one_module_calls_the_compiler():
+def test_only_two_modules_speak_to_the_compiler():
     for path in FILES:
         outside = {module.split(".")[0] for module, _ in imports(ast.parse(path.read_text()))}
-        assert path.name == "compiled.py" or "numba" not in outside, name(path)
+        assert path.name in COMPILER or "numba" not in outside, name(path)
 
 
 def test_modules_do_not_import_each_other_in_a_circle():
@@ -138,6 +142,8 @@ def test_imports_stand_at_the_top(path):
 
 @pytest.mark.parametrize("path", FILES, ids=name)
 def test_files_and_functions_stay_small(path):
+    if name(path) in WRITTEN:
+        return
     text = path.read_text()
     source = text.splitlines()
     assert len(source) <= LONGEST_FILE

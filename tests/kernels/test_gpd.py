@@ -39,10 +39,30 @@ def test_zhang_stephens_on_a_sample_of_quantiles():
     assert gpd.fit_zhang_stephens(sample_of_quantiles(0.2)) == pytest.approx((0.215376, 0.980905), abs=2e-6)
 
 
+# Hosking & Wallis (1987), formula; value computed independently.
+def test_probability_weighted_moments_on_a_sample_of_quantiles():
+    assert gpd.fit_pwm(sample_of_quantiles(0.2)) == pytest.approx((0.193482, 0.997096), abs=2e-6)
+
+
+def test_probability_weighted_moments_beyond_the_end_point_are_refused():
+    # Half of the mass at 1 and one value far out: the fitted end point lies short of the largest value.
+    y = np.concatenate([np.linspace(0.9, 1.0, 60), [2.5]])
+    n, p = y.size, (np.arange(1, y.size + 1) - 0.35) / y.size
+    a0, a1 = y.mean(), np.mean((1 - p) * y)
+    xi, beta = 2 - a0 / (a0 - 2 * a1), 2 * a0 * a1 / (a0 - 2 * a1)
+    assert n == 61
+    assert xi < 0
+    assert y.max() > beta / -xi
+    assert np.isnan(gpd.fit_pwm(y.copy())).all()
+    fitted = gpd.fit(y.copy(), gpd.BY_PWM, np.nan)
+    assert fitted[3] == gpd.ZHANG_STEPHENS
+    assert fitted[:2] == pytest.approx(gpd.fit_zhang_stephens(y))
+
+
 def test_the_bmw_tail():
     # Computed independently (profile likelihood): threshold, shape, scale, VaR and ES at 0.99 of the whole series.
     x = bmw().to_numpy()
-    threshold, y = gpd.excesses(x, 100)
+    threshold, y = gpd.excesses(x, 100, np.nan, np.empty((2, x.size)))
     xi, beta, _ = gpd.fit_ml(y, np.nan)
     var, es = gpd.quantile_and_shortfall(threshold, xi, beta, 0.01 * x.size / 100)
     assert (threshold, xi, beta) == pytest.approx((3.42151, 0.197230, 1.201891), abs=1e-5)
@@ -118,13 +138,13 @@ def test_a_warm_guess_ends_where_a_cold_start_ends(seed):
     assert warm == pytest.approx(cold, rel=1e-8, abs=1e-9, nan_ok=True)
 
 
-def roll(samples: np.ndarray, k: int = 100, by_ml: bool = True):
-    return gpd.roll_gpd(samples, np.array([0.975, 0.99]), k, np.arange(len(samples)), 32, by_ml)
+def roll(samples: np.ndarray, k: int = 100, by: int = gpd.BY_ML):
+    return gpd.roll_gpd(samples, np.array([0.975, 0.99]), k, np.arange(len(samples)), 32, by)
 
 
 def test_ties_at_the_threshold_are_dropped_from_the_excesses():
     sample = np.concatenate([np.zeros(850), np.full(100, 1.0), np.linspace(1.5, 4.0, 50)])
-    threshold, y = gpd.excesses(sample, 100)
+    threshold, y = gpd.excesses(sample, 100, np.nan, np.empty((2, sample.size)))
     assert threshold == 1.0
     assert y.size == 50
     assert y.min() > 0
@@ -151,3 +171,35 @@ def test_the_pit_above_the_threshold_inverts_the_quantile():
     quantile, _, tail, _ = roll(sample)
     for j, q in enumerate((0.975, 0.99)):
         assert gpd.pit_rows(sample, tail, quantile[:, j])[0] == pytest.approx(q, abs=1e-12)
+
+
+@given(st.integers(0, 10_000), st.floats(-3, 3), st.booleans())
+@settings(max_examples=60, deadline=None)
+def test_a_guess_of_the_threshold_changes_nothing(seed, bound, rounded):
+    sample = np.random.default_rng(seed).standard_t(4, 500)
+    sample = np.round(sample, 1) if rounded else sample
+    threshold, y = gpd.excesses(sample, 50, bound, np.empty((2, 500)))
+    assert threshold == np.sort(sample)[-51]
+    np.testing.assert_array_equal(y, sample[sample > threshold] - threshold)
+
+
+@pytest.mark.parametrize("by", [gpd.BY_ML, gpd.BY_ZHANG_STEPHENS, gpd.BY_PWM])
+def test_rolling_gives_each_row_what_it_gets_alone(by):
+    x = bmw().to_numpy()[2000:2700]
+    samples = np.ascontiguousarray(np.lib.stride_tricks.sliding_window_view(x, 500)[::3])
+    together = roll(samples, 50, by)
+    for i, row in enumerate(samples):
+        alone = roll(row[None, :], 50, by)
+        np.testing.assert_allclose(together[0][i], alone[0][0], rtol=1e-10)
+        np.testing.assert_allclose(together[1][i], alone[1][0], rtol=1e-10)
+
+
+@given(st.integers(0, 10_000), st.sampled_from([1e-4, 5e-3, 0.019, 0.021, 0.3]), st.booleans())
+@settings(max_examples=60, deadline=None)
+def test_products_keep_the_digits_of_the_logarithm(seed, size, below):
+    y = np.random.default_rng(seed).standard_exponential(100) / 3
+    theta = -size if below else size
+    moments = np.array([y.mean(), (y**2).mean(), (y**3).mean()])
+    mean = np.log1p(theta * y).mean()
+    assert gpd.mean_log(y, theta) == pytest.approx(mean, rel=1e-13)
+    assert gpd.slope(y, theta, moments)[2] == pytest.approx(mean, rel=1e-13)

@@ -16,6 +16,20 @@ def test_largest_is_the_head_of_the_sorted_sample(sample, k):
     np.testing.assert_array_equal(order.largest(sample, k), np.sort(sample)[::-1][:k])
 
 
+@given(SAMPLES, st.integers(1, 20))
+@settings(deadline=None)
+def test_the_kth_largest_is_that_of_the_sorted_sample(sample, k):
+    assert order.kth_largest(sample.copy(), k) == np.sort(sample)[-k]
+
+
+@given(arrays(np.float64, st.integers(1, 900), elements=st.integers(-5, 5)))
+@settings(deadline=None)
+def test_sorting_is_that_of_numpy(sample):
+    expected = np.sort(sample)
+    order.sort_ascending(sample)
+    np.testing.assert_array_equal(sample, expected)
+
+
 @given(SAMPLES, st.floats(-1e6, 1e6))
 @settings(deadline=None)
 def test_the_rank_counts_what_is_strictly_below(sample, value):

@@ -99,6 +99,29 @@ def test_parquet_and_side_files_are_recognised(tmp_path: Path) -> None:
     assert len(assert_reads(study, table).changes) == 1
 
 
+VECTORS = "date,desk,scenario,pnl\n2022-03-01,Wool,2022-02-28,1\n"
+FACTORS = "date,factor,return\n2022-02-28,oak,0.1\n"
+EXPOSURES = "date,desk,factor,amount\n2022-03-01,Wool,oak,10\n"
+
+
+def test_vectors_are_not_taken_for_pnl(tmp_path: Path) -> None:
+    table = firm_table()
+    files = {"moves.csv": VECTORS, "pnl.csv": pnl_text(table), "risk.csv": reported_text(table)}
+    _, study = drafted(tmp_path, files)
+    assert (study.data.pnl, study.data.vectors) == ("pnl.csv", "moves.csv")
+    assert list(assert_reads(study, table).vectors) == ["Wool"]
+
+
+@pytest.mark.parametrize("alone", [False, True])
+def test_factors_are_named_only_together_with_exposures(tmp_path: Path, alone: bool) -> None:
+    table = firm_table()
+    files = {"pnl.csv": pnl_text(table), "risk.csv": reported_text(table), "f.csv": FACTORS}
+    text, study = drafted(tmp_path, files if alone else files | {"e.csv": EXPOSURES})
+    assert (study.data.factors, study.data.exposures) == ((None, None) if alone else ("f.csv", "e.csv"))
+    assert ("f.csv has no role here" in text) == alone
+    assert list(assert_reads(study, table).vectors) == ([] if alone else ["Wool"])
+
+
 def test_negative_var_losses_and_as_of_dates_are_detected(tmp_path: Path) -> None:
     table = invented(400, DESKS)
     risk = ["var_99", "var_975", "es_975"]

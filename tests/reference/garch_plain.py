@@ -1,17 +1,36 @@
-"""A second, plain GARCH(1,1) likelihood: numpy and loops, no derivatives, complex arguments allowed."""
+"""A second, plain likelihood of the GARCH family: numpy and loops, no derivatives, complex arguments allowed."""
 
 import numpy as np
+from scipy.special import loggamma
+
+C, PHI, OMEGA, ALPHA, GAMMA, BETA, ETA, LAMBDA = range(8)
 
 
-def log_likelihood(theta, losses, start, fixed=None, skip=0):
-    """Gaussian log-likelihood; theta = (c, phi, omega, alpha, beta); start: fixed, mean-square or unconditional."""
-    c, phi, omega, alpha, beta = theta
+def log_density(z, law, eta, lam):
+    """Log density of a unit-variance residual (Hansen 1994 for the skewed t); works for complex arguments."""
+    if law == "normal":
+        return -0.5 * np.log(2 * np.pi) - 0.5 * z * z
+    nu = 1 / eta
+    log_c = loggamma((nu + 1) / 2) - loggamma(nu / 2) - 0.5 * np.log(np.pi * (nu - 2))
+    if law == "tails":
+        return log_c - (nu + 1) / 2 * np.log(1 + z * z / (nu - 2))
+    a = 4 * lam * np.exp(log_c) * (nu - 2) / (nu - 1)
+    b = np.sqrt(1 + 3 * lam * lam - a * a)
+    side = 1 + lam if (z + a / b).real > 0 else 1 - lam
+    y = (b * z + a) / side
+    return np.log(b) + log_c - (nu + 1) / 2 * np.log(1 + y * y / (nu - 2))
+
+
+def log_likelihood(theta, losses, start, fixed=None, skip=0, law="normal"):
+    """Log-likelihood; start: fixed, mean-square or unconditional."""
+    c, phi, omega, alpha, gamma, beta, eta, lam = theta
     x = np.asarray(losses, dtype=float)
     lag = np.concatenate([[0.0], x[:-1]])
     e = (x - c - phi * lag)[skip:]
-    before = {"fixed": fixed, "mean-square": np.mean(e * e), "unconditional": omega / (1 - alpha - beta)}[start]
-    h, total = omega + (alpha + beta) * before, 0.0
+    persistence = alpha + gamma / 2 + beta
+    before = {"fixed": fixed, "mean-square": np.mean(e * e), "unconditional": omega / (1 - persistence)}[start]
+    h, total = omega + persistence * before, 0.0
     for t in range(len(e)):
-        total += -0.5 * (np.log(2 * np.pi) + np.log(h) + e[t] * e[t] / h)
-        h = omega + alpha * e[t] * e[t] + beta * h
+        total += log_density(e[t] / np.sqrt(h), law, eta, lam) - 0.5 * np.log(h)
+        h = omega + (alpha + gamma * (e[t].real > 0)) * e[t] * e[t] + beta * h
     return total

@@ -1,0 +1,61 @@
+"""The likelihood of the GARCH family for eight pasts at once: value, exact gradient and Hessian in one pass.
+
+Derivatives of h follow the same recursion as h (Fiorentini, Calzolari & Panattoni 1996, J. Applied Econometrics 11).
+``ar``, ``gjr``, ``tails`` and ``skew`` are None or True: what is None is not compiled. The passes themselves are
+written out by ``write_passes.py``; the logarithm is taken once per 32 days, of a product.
+"""
+
+from typing import Any
+
+import numpy as np
+
+from backtest.kernels import passes
+from backtest.kernels.compiled import compiled
+from backtest.kernels.laws import set_constants
+from backtest.kernels.parameters import BETA, COUNT
+from backtest.kernels.start import first_curvature, first_variance
+from backtest.kernels.terms import Pass
+
+
+@compiled
+def begin(p: Pass, lane: int, start: int, fixed: float, moments: np.ndarray, shapes: int) -> None:
+    """Set one lane's first day: h, its derivatives, and the constants of the law (``shapes`` 0, 1 or 2)."""
+    p.value[0, lane] = 0.0
+    p.after[0, lane] = first_variance(p.theta, lane, start, fixed, moments, p.d)
+    for i in range(BETA + 1):
+        for j in range(i, BETA + 1):
+            p.dd[i * COUNT + j, lane] = first_curvature(i, j, p.theta, lane, start, moments, p.d)
+    if shapes:
+        set_constants(p.theta, lane, shapes == 2, p.law)
+
+
+@compiled
+def evaluate(p: Pass, x: np.ndarray, skip: int, ar: Any, gjr: Any, tails: Any, skew: Any) -> None:
+    """Run the pass of the member chosen over the days of ``x`` (W, lanes), after ``begin`` for every lane."""
+    if ar is None:
+        if gjr is None:
+            if tails is None:
+                passes.constant_garch_normal(p, x, skip)
+            elif skew is None:
+                passes.constant_garch_tails(p, x, skip)
+            else:
+                passes.constant_garch_skew(p, x, skip)
+        elif tails is None:
+            passes.constant_gjr_normal(p, x, skip)
+        elif skew is None:
+            passes.constant_gjr_tails(p, x, skip)
+        else:
+            passes.constant_gjr_skew(p, x, skip)
+    elif gjr is None:
+        if tails is None:
+            passes.ar1_garch_normal(p, x, skip)
+        elif skew is None:
+            passes.ar1_garch_tails(p, x, skip)
+        else:
+            passes.ar1_garch_skew(p, x, skip)
+    elif tails is None:
+        passes.ar1_gjr_normal(p, x, skip)
+    elif skew is None:
+        passes.ar1_gjr_tails(p, x, skip)
+    else:
+        passes.ar1_gjr_skew(p, x, skip)
