@@ -50,10 +50,11 @@ def _shown(value: object) -> str:
     return text if len(text) <= 80 else text[:77] + "..."
 
 
-def near_miss(word: str, known: Iterable[str]) -> str:
-    """Say which known names there are, the nearest first: the remedy for an unknown name."""
+def near_miss(word: object, known: Iterable[str]) -> str:
+    """Say which known names there are, the nearest first, whatever its case: the remedy for an unknown name."""
     names = sorted(known)
-    close = difflib.get_close_matches(word, names, n=1, cutoff=0.6)
+    small = {name.casefold(): name for name in names}
+    close = difflib.get_close_matches(str(word).casefold(), small, n=1, cutoff=0.6)
     if close:
-        return f"Did you mean {close[0]!r}?"
-    return "Known: " + ", ".join(names)
+        return f"Did you mean {small[close[0]]!r}?"
+    return "Known: " + ", ".join(names) + "."

@@ -1,5 +1,6 @@
 """The only module that knows every room; the public verbs."""
 
+import dataclasses
 import datetime as dt
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -12,8 +13,9 @@ import pandas as pd
 
 from backtest.errors import StudyError
 from backtest.explaining.steps import DeskSteps, Method, desk_steps, resolve_windows
+from backtest.forecasting.asked import ask
 from backtest.forecasting.engine import DeskHistory, joined
-from backtest.forecasting.histories import check_past, desk_histories, learnt_from
+from backtest.forecasting.histories import check_past, desk_histories, learnt_from, reported_scales, unscaled_days
 from backtest.forecasting.models import Model, resolve, resolve_all
 from backtest.judging import battery
 from backtest.judging.bridge import bridge_table
@@ -23,6 +25,7 @@ from backtest.judging.sufficiency import multiple_results
 from backtest.judging.zones import resolve_rules
 from backtest.reading.draft import draft_study
 from backtest.reading.inputs import read_inputs
+from backtest.reading.remarks import in_order
 from backtest.recording.manifest import make_manifest
 from backtest.recording.run_folder import read_record, replace_folder, write_document, write_record
 from backtest.records import (
@@ -82,8 +85,12 @@ def _resolve(study: Study) -> _Resolved:
     return _Resolved(models, tuple(methods), battery.resolve(study.judge.tests))
 
 
-def _inputs(study: Study, resolved: _Resolved) -> Inputs:
-    """Read the data, and refuse a challenger that bears the name of a reported model other than the subject."""
+def _inputs(study: Study, resolved: _Resolved) -> tuple[Inputs, list[DeskHistory]]:
+    """Read the data and what each desk hands to the engine.
+
+    Refuses a challenger that bears the name of a reported model other than the subject; remarks on days whose reported
+    VaR cannot be a scale.
+    """
     inputs = read_inputs(study)
     shared = sorted({m.name for m in resolved.models} & set(inputs.reported["model"]))
     if shared:
@@ -91,7 +98,12 @@ def _inputs(study: Study, resolved: _Resolved) -> Inputs:
             "a challenger and a model of the reported file have the same name", value=shared[0], place=str(study.path),
             rule="a name stands for one model", remedy="Give the challenger another name in [[forecast.model]].",
         )  # fmt: skip
-    return inputs
+    scales = reported_scales(resolved.models, inputs.reported, study.review.subject)
+    histories = desk_histories(
+        inputs.pnl, inputs.calendar, inputs.as_of, study.forecast.learn_from, inputs.desks, inputs.vectors, scales
+    )
+    remarks = in_order([*inputs.remarks, *unscaled_days(histories, resolved.models)])
+    return dataclasses.replace(inputs, remarks=remarks), histories
 
 
 def check(study: Study) -> list[str]:
@@ -100,7 +112,8 @@ def check(study: Study) -> list[str]:
     Raises what a run would raise; computes nothing.
     """
     resolved = _resolve(study)
-    return input_lines(_inputs(study, resolved))
+    inputs, _ = _inputs(study, resolved)
+    return input_lines(inputs)
 
 
 def draft(files: Sequence[str | Path]) -> str:
@@ -124,12 +137,10 @@ def run(
     started, report = dt.datetime.now(dt.UTC), progress or silent
     resolved = _resolve(study)
     report("reading", 0, 1)
-    inputs = _inputs(study, resolved)
-    histories = desk_histories(
-        inputs.pnl, inputs.calendar, inputs.as_of, study.forecast.learn_from, inputs.desks, inputs.vectors
-    )
+    inputs, histories = _inputs(study, resolved)
     cores = workers or joblib.cpu_count()
-    forecasts, fits = forecast_desks(histories, resolved.models, study.forecast.levels, cores, report)
+    asked = ask(study.forecast.bands, study.forecast.horizons, seed=study.seed)
+    forecasts, fits = forecast_desks(histories, resolved.models, study.forecast.levels, cores, report, asked)
     bridge = _bridge_steps(study, inputs, histories, forecasts, resolved, cores, report)
     record = _judged(study, inputs, resolved, forecasts, fits, bridge, started, report)
     wanted = Path(out) if out is not None else study.folder / f"{study.path.stem}-run"
@@ -180,7 +191,7 @@ def _bridge_steps(
 
     def steps(history: DeskHistory) -> DeskSteps:
         rows = reported[(reported["desk"] == history.desk) & (reported["model"] == subject)]
-        made = forecasts[forecasts["desk"] == history.desk]
+        made = forecasts[(forecasts["desk"] == history.desk) & (forecasts["horizon"] == 1)]
         return desk_steps(
             history, rows, made, subject=subject, methods=resolved.methods, ready=resolved.models,
             levels=study.forecast.levels,
@@ -213,7 +224,7 @@ def _judged(
     table = bridge_table(pnl, {b.desk: b.steps for b in bridge}, levels=study.forecast.levels, as_of=as_of)
     everything = joined([judged, *(b.extra for b in bridge)], FORECAST_COLUMNS)
     return Record(
-        manifest=_manifest(study, inputs, resolved, everything, started),
+        manifest=_manifest(study, inputs, resolved, everything[everything["horizon"] == 1], started),
         pnl=_kept_pnl(inputs),
         forecasts=everything,
         fits=fits,

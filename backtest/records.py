@@ -19,13 +19,12 @@ VECTORS = "vectors"
 """What models learn from where it is no P&L kind: each day's positions under past market moves."""
 
 FORECAST_COLUMNS = (
-    "date", "origin", "desk", "model", "level", "horizon", "var", "es", "mean", "sigma", "shape", "scale",
-    "threshold", "pit_hypothetical", "pit_actual", "status",
+    "date", "origin", "desk", "model", "level", "horizon", "var", "es", "var_low", "var_high", "es_low",
+    "es_high", "mean", "sigma", "shape", "scale", "threshold", "pit_hypothetical", "pit_actual", "status",
 )  # fmt: skip
 FIT_COLUMNS = (
     "date", "desk", "filter", "window", "recalibrated_on", "intercept", "ar", "omega", "alpha", "gamma", "beta",
-    "nu", "lambda", "loglik",
-    "second_mode_sigma", "status",
+    "nu", "lambda", "other_parameters", "loglik", "second_mode_sigma", "status",
 )  # fmt: skip
 BRIDGE_COLUMNS = (
     "desk", "level", "pnl_kind", "step", "model", "window", "from", "to", "days", "exceptions", "average_var",

@@ -164,6 +164,8 @@ class Forecast(_Form):
     levels: tuple[Level, ...] = Field(default=(0.975, 0.99), min_length=1)
     learn_from: Literal["hypothetical", "actual", "vectors"] = "hypothetical"
     fallback_share: float = Field(default=0.01, ge=0, le=1)
+    horizons: tuple[Annotated[int, Field(ge=1, le=250)], ...] = (1,)
+    bands: Literal["delta", "bootstrap", "none"] = "delta"
     every_start: bool = False
     models: tuple[str, ...] = ("historical", "filtered-historical", "unconditional-evt", "conditional-evt")
     model: tuple[ModelSettings, ...] = ()

@@ -8,12 +8,13 @@ import numpy as np
 import pandas as pd
 
 from backtest.errors import StudyError
-from backtest.forecasting.engine import DeskHistory, forecast_group, groups, joined
-from backtest.forecasting.histories import check_past, desk_histories
+from backtest.forecasting.asked import Asked, ask
+from backtest.forecasting.engine import ONE_DAY, SQRT_TIME, DeskHistory, forecast_group, groups, joined
+from backtest.forecasting.histories import check_past, desk_histories, reported_scales
 from backtest.forecasting.models import Model, resolve_all
 from backtest.judging import battery
 from backtest.kernels.compiled import is_warm
-from backtest.reading.frames import pnl_table, vectors_table
+from backtest.reading.frames import pnl_table, reported_table, vectors_table
 from backtest.records import FIT_COLUMNS, FORECAST_COLUMNS, PNL_KINDS, VECTORS, latest_known, results_table
 
 Progress = Callable[[str, int, int], None]
@@ -35,8 +36,15 @@ def forecast(
     recalibrate_days: int = 1,
     learn_from: str = "hypothetical",
     vectors: pd.DataFrame | None = None,
+    reported: pd.DataFrame | None = None,
     calendar: Sequence[Any] | np.ndarray | None = None,
     every_start: bool = False,
+    horizons: Sequence[int] = (1,),
+    bands: str = "delta",
+    seed: int = 1,
+    paths: int = 10_000,
+    bootstraps: int = 199,
+    bootstrap_days: int = 20,
     workers: int = 1,
     progress: Progress | None = None,
 ) -> pd.DataFrame:
@@ -46,11 +54,19 @@ def forecast(
     positive; ``models``: names or mappings with the keys of ``[[forecast.model]]``; ``calendar``: business days, else
     the union of the table's days; ``vectors`` with ``learn_from="vectors"``: ``date, desk, scenario, pnl``, the P&L of
     each target day's positions under the market moves of past days, so that the past is the last ``window`` scenarios
-    before it (a desk or day without a vector of that length has no forecast). Returns the forecasts table
+    before it (a desk or day without a vector of that length has no forecast). ``reported``: ``date, desk, level, var``
+    of one model of the institution, by target day, for models with the filter "reported": their past is loss / VaR of
+    days with a positive VaR, at the lowest level reported throughout, and their forecast a multiple of the VaR of the
+    target day (a day without a positive one has no such forecast). ``horizons``: days; beyond one day, VaR
+    and ES of the loss of that many days from ``date`` on, simulated on ``paths`` paths, and by the root of time under
+    the name "<model> sqrt-time". ``bands``: 95% intervals of one-day VaR and ES from estimation error, by the "delta"
+    method, "none", or for the last ``bootstrap_days`` days of each desk by a residual "bootstrap" that refits filter
+    and tail ``bootstraps`` times a day. ``seed``: of what is simulated. Returns the forecasts table
     (``records.FORECAST_COLUMNS``); the number of ``workers`` (threads) changes nothing in it. Raises StudyError for
     models, levels or settings that do not exist or do not fit, DataError for a table that cannot be used.
     """
     _check_levels(levels)
+    asked = ask(bands, horizons, seed=seed, paths=paths, bootstraps=bootstraps, bootstrap_days=bootstrap_days)
     resolved = resolve_all(
         models, levels=levels, window=window, recalibrate_days=recalibrate_days, every_start=every_start
     )
@@ -60,8 +76,9 @@ def forecast(
     positions = None if vectors is None else vectors_table(vectors, table["desk"].unique())
     days = table["date"].to_numpy() if calendar is None else np.asarray(calendar)
     business = np.unique(days.astype("datetime64[D]"))
-    histories = desk_histories(table, business, business[-1], learn_from, None, positions)
-    forecasts, _ = forecast_desks(histories, resolved, levels, workers, progress or silent)
+    scales = reported_scales(resolved, reported_table(reported, table["desk"].unique()), None)
+    histories = desk_histories(table, business, business[-1], learn_from, None, positions, scales)
+    forecasts, _ = forecast_desks(histories, resolved, levels, workers, progress or silent, asked)
     return forecasts
 
 
@@ -90,20 +107,30 @@ def judge(
 
 
 def forecast_desks(
-    histories: Sequence[DeskHistory], models: Sequence[Model], levels: Sequence[float], workers: int, report: Progress
+    histories: Sequence[DeskHistory],
+    models: Sequence[Model],
+    levels: Sequence[float],
+    workers: int,
+    report: Progress,
+    asked: Asked = ONE_DAY,
 ) -> tuple[pd.DataFrame, pd.DataFrame]:
     """Forecast every desk by every model: one task a desk x filter, in threads; the order of tasks changes nothing."""
     tasks = [(history, group) for history in histories for group in groups(models)]
     if tasks and not is_warm():
         report("compiling the kernels: once per machine, up to a minute", 0, len(tasks))
     parts = each(
-        lambda task: forecast_group(task[0], task[1], levels), tasks, workers, report, "forecasting desk x filter"
+        lambda task: forecast_group(task[0], task[1], levels, asked),
+        tasks,
+        workers,
+        report,
+        "forecasting desk x filter",
     )
     forecasts = joined([p[0] for p in parts], FORECAST_COLUMNS)
     fits = joined([p[1] for p in parts], FIT_COLUMNS)
-    order = pd.Series({model.name: i for i, model in enumerate(models)})
+    names = [name for model in models for name in (model.name, f"{model.name} {SQRT_TIME}")]
+    order = pd.Series({name: i for i, name in enumerate(names)})
     rank = forecasts["model"].map(order)
-    forecasts = forecasts.assign(_rank=rank).sort_values(["desk", "_rank", "level", "date"], kind="stable")
+    forecasts = forecasts.assign(_rank=rank).sort_values(["desk", "_rank", "horizon", "level", "date"], kind="stable")
     return forecasts.drop(columns="_rank").reset_index(drop=True), fits
 
 

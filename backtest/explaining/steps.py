@@ -7,8 +7,9 @@ from datetime import date
 import numpy as np
 import pandas as pd
 
+from backtest.errors import StudyError
 from backtest.forecasting.engine import DeskHistory, forecast_group, groups
-from backtest.forecasting.models import Model, resolve
+from backtest.forecasting.models import REPORTED, Model, resolve
 from backtest.judging.bridge import FEWEST_SHARED_DAYS, STEPS, Step
 
 WINDOWS = (1000, 750, 500)
@@ -22,6 +23,14 @@ class Method:
 
     since: date
     model: Model
+
+    def __post_init__(self) -> None:
+        """Refuse a method that would perform the reported VaR again from itself."""
+        if self.model.filter.kind == REPORTED:
+            raise StudyError(
+                "a reported model cannot be performed again from its own VaR", value=REPORTED,
+                place="review.method, filter", remedy="Write how the model works, or leave the method out.",
+            )  # fmt: skip
 
 
 @dataclass(frozen=True)

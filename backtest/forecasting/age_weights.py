@@ -14,5 +14,6 @@ def weighted_rank(samples: np.ndarray, weights: np.ndarray, values: np.ndarray) 
     With equal weights this is the rank (number below + 0.5)/(m + 1).
     """
     average = 1.0 / samples.shape[1]
-    below = (samples < values[:, None]) @ weights
+    # A sum by row, not a product with a matrix, whose last bit depends on how many rows there are.
+    below = np.where(samples < values[:, None], weights, 0.0).sum(axis=1)
     return np.where(np.isnan(values), np.nan, (below + 0.5 * average) / (1.0 + average))

@@ -5,7 +5,8 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from backtest.forecasting.models import INNOVATIONS, MEANS, STARTS, FilterSpec
+from backtest.forecasting import library
+from backtest.forecasting.models import INNOVATIONS, LIBRARY, MEANS, REPORTED, STARTS, FilterSpec
 from backtest.kernels import garch, rolling
 from backtest.kernels.ewma import roll_ewma
 from backtest.kernels.parameters import ETA, LAMBDA
@@ -19,7 +20,9 @@ class Filtered:
     mean, sigma (n): of the target day, NaN where the filter has none to say (filter none); residuals (n, m); status (n)
     of words; fits: named columns (n) for the fits table, empty where nothing is estimated; law: of the standardised
     residuals ("normal", "t", "skew-t"), empty where they are not standardised; shape (n, 2): nu and lambda of the
-    innovations, NaN in rows without them, empty where the law has no shape.
+    innovations, NaN in rows without them, empty where the law has no shape; uncertainty (n, 3): variances of the next
+    mean and of the next sigma and their covariance, from estimation error, in squared loss units, None where nothing is
+    estimated.
     """
 
     mean: np.ndarray
@@ -29,6 +32,7 @@ class Filtered:
     fits: dict[str, np.ndarray]
     law: str = ""
     shape: np.ndarray = field(default_factory=lambda: np.empty((0, 2)))
+    uncertainty: np.ndarray | None = None
 
 
 FITTED_WORDS = {
@@ -67,7 +71,7 @@ def _garch(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.nd
         MEANS.index(spec.mean), STARTS.index(spec.start), gjr=spec.kind == "gjr", shapes=shapes,
         every_start=spec.every_start,
     )  # fmt: skip
-    found = garch.roll(pasts, places, refit, member)
+    found = garch.roll(pasts, places, refit, member, uncertain=True)
     unused = np.setdiff1d(np.arange(found.parameters.shape[1]), member.free)
     found.parameters[:, unused] = np.nan
     fits = {name: found.parameters[:, i] for i, name in garch.NAMES.items()}
@@ -79,7 +83,23 @@ def _garch(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.nd
     if shapes == 1:
         shape[:, 1] = np.nan
     texts = words(found.status, FITTED_WORDS)
+    return Filtered(
+        found.mean, found.sigma, found.residuals, texts, fits, spec.innovations, shape, found.uncertainty
+    )  # fmt: skip
+
+
+def _library(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.ndarray) -> Filtered:
+    found = library.follow(pasts, spec, places, refit)
+    fits = {**library.columns(found.fits), "loglik": found.loglik}
+    shape = np.empty((0, 2)) if spec.innovations == "normal" else np.column_stack([fits["nu"], fits["lambda"]])
+    texts = words(found.status, FITTED_WORDS)
     return Filtered(found.mean, found.sigma, found.residuals, texts, fits, spec.innovations, shape)
+
+
+def _reported(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.ndarray) -> Filtered:
+    """Take ratios to the reported VaR as they are; mean and sigma are those of a day whose reported VaR is one."""
+    n = len(pasts)
+    return Filtered(np.zeros(n), np.ones(n), pasts, np.full(n, "", dtype=object), {})
 
 
 FILTERS: dict[str, Callable[[np.ndarray, FilterSpec, np.ndarray, np.ndarray], Filtered]] = {
@@ -87,6 +107,8 @@ FILTERS: dict[str, Callable[[np.ndarray, FilterSpec, np.ndarray, np.ndarray], Fi
     "ewma": _ewma,
     "garch": _garch,
     "gjr": _garch,
+    LIBRARY: _library,
+    REPORTED: _reported,
 }
 
 

@@ -7,14 +7,20 @@ from typing import Any
 import numpy as np
 
 from backtest.errors import StudyError, near_miss
+from backtest.forecasting.processes import PROCESSES
 from backtest.kernels.gpd import FEWEST
+from backtest.values import fraction, listed, whole
 
 MEANS = ("zero", "constant", "ar1", "ar1-no-intercept")
 GPD_FITS = ("ml", "zhang-stephens", "pwm")
 """In the order of the estimators of kernels/gpd.py."""
 STARTS = ("sample-variance", "mean-square", "unconditional", "ewma-75")
 INNOVATIONS = ("normal", "t", "skew-t")
-ESTIMATED = ("garch", "gjr")
+LIBRARY, REPORTED = "library", "reported"
+"""Filters that ask the library arch for a process, and that take the reported VaR as the scale."""
+SHORTEST = 50
+"""Shortest window in losses."""
+ESTIMATED = ("garch", "gjr", LIBRARY)
 """Filters with parameters to estimate."""
 
 
@@ -28,11 +34,19 @@ class FilterSpec:
     start: str = ""
     innovations: str = ""
     every_start: bool = False
+    process: str = ""
 
     @property
     def label(self) -> str:
         """The filter as written in the fits table."""
-        return f"{self.kind} {self.mean} {self.innovations} {self.start}" if self.kind in ESTIMATED else self.kind
+        kind = f"{self.kind}:{self.process}" if self.process else self.kind
+        options = (self.mean, self.innovations, self.start) if self.kind in ESTIMATED else ()
+        return " ".join([kind, *filter(None, options)])
+
+    @property
+    def conditions(self) -> int:
+        """How many days at the front of a past have no residual, since they only condition."""
+        return int(self.mean in ("ar1", "ar1-no-intercept") and (self.start == "ewma-75" or self.kind == LIBRARY))
 
 
 @dataclass(frozen=True)
@@ -58,8 +72,7 @@ class Model:
     @property
     def residuals(self) -> int:
         """How many residuals a window leaves the tail."""
-        conditions = self.filter.start == "ewma-75" and self.filter.mean in ("ar1", "ar1-no-intercept")
-        return self.window - int(conditions)
+        return self.window - self.filter.conditions
 
     @property
     def line(self) -> str:
@@ -71,7 +84,8 @@ class Model:
     @property
     def source(self) -> str:
         """The published sources of filter and tail."""
-        sources = (_SOURCES[self.filter.kind], _SOURCES[self.tail.kind], _SOURCES.get(self.tail.fit, ""))
+        process = PROCESSES[self.filter.process].source if self.filter.process else ""
+        sources = (_SOURCES[self.filter.kind], process, _SOURCES[self.tail.kind], _SOURCES.get(self.tail.fit, ""))
         return "; ".join(s for s in sources if s) or "common practice, no source"
 
 
@@ -80,6 +94,13 @@ _FILTER_LINES: dict[str, Any] = {
     "ewma": lambda m: f"last {m.window} losses over an EWMA volatility (decay {m.filter.decay:g})",
     "garch": lambda m: _estimated_line(m, "GARCH(1,1)"),
     "gjr": lambda m: _estimated_line(m, "GJR(1,1)"),
+    LIBRARY: lambda m: (
+        _estimated_line(m, f"{m.filter.process} ({PROCESSES[m.filter.process].orders})")
+        + ", by the library arch, slower: one start a fit, a general optimiser"
+    ),
+    REPORTED: lambda m: (
+        f"last {m.window} losses, each over the VaR reported for its day, times the VaR reported for the target day"
+    ),
 }
 _BY_LAW = {
     "normal": "Gaussian quasi maximum likelihood",
@@ -99,6 +120,8 @@ _TAIL_LINES: dict[str, Any] = {
 }
 _SOURCES = {
     "none": "",
+    LIBRARY: "",
+    REPORTED: "",
     "empirical": "",
     "age-weighted": "Boudoukh, Richardson & Whitelaw (1998)",
     "normal": "",
@@ -114,7 +137,11 @@ _SOURCES = {
 }
 
 _ESTIMATED_OPTIONS = ("mean", "start", "innovations", "recalibrate_days")
-_FILTER_OPTIONS = {"none": (), "ewma": ("decay",), "garch": _ESTIMATED_OPTIONS, "gjr": _ESTIMATED_OPTIONS}
+_FILTER_OPTIONS: dict[str, tuple[str, ...]] = {
+    "none": (), "ewma": ("decay",), "garch": _ESTIMATED_OPTIONS, "gjr": _ESTIMATED_OPTIONS, REPORTED: (),
+    LIBRARY: ("mean", "innovations", "recalibrate_days"),
+}  # fmt: skip
+_FILTER_NAMES = (*(k for k in _FILTER_OPTIONS if k != LIBRARY), *(f"{LIBRARY}:{p}" for p in PROCESSES))
 _TAIL_OPTIONS: dict[str, tuple[str, ...]] = {
     "empirical": (), "age-weighted": ("age_decay",), "normal": (), "t": (), "skew-t": (),
     "gpd": ("tail_share", "gpd_fit"),
@@ -151,13 +178,20 @@ def resolve(
         if model not in NAMED:
             raise StudyError("unknown model", value=model, place="forecast.models", remedy=near_miss(model, NAMED))
         options: dict[str, Any] = {"name": model, **NAMED[model]}
-    else:
+    elif isinstance(model, Mapping):
         options = {key: value for key, value in model.items() if value is not None}
         _check_keys(options)
-    name = str(options.get("name", "")) or f"{options.get('filter', 'none')} {options.get('tail', 'empirical')}"
+    else:
+        rule = "a model is a name, or a mapping with the keys of [[forecast.model]]"
+        raise StudyError("not a model", value=model, place="forecast.models", rule=rule)
+    name = options.get("name") or f"{options.get('filter', 'none')} {options.get('tail', 'empirical')}"
+    if not isinstance(name, str):
+        raise StudyError("a model's name is not text", value=name, place="forecast.models")
     spec_filter, spec_tail = _filter(options, name, every_start), _tail(options, name)
-    days = int(options.get("recalibrate_days", recalibrate_days))
-    resolved = Model(name, spec_filter, spec_tail, int(options.get("window", window)), days)
+    days = whole(options.get("recalibrate_days", recalibrate_days), f"model {name!r}, recalibrate_days", least=1)
+    length = whole(options.get("window", window), f"model {name!r}, window", least=SHORTEST)
+    resolved = Model(name, spec_filter, spec_tail, length, days)
+    _check_named(resolved, every_start)
     _check_reach(resolved, levels)
     return resolved
 
@@ -166,13 +200,23 @@ def resolve_all(
     models: Sequence[str | Mapping[str, Any]], *, taken: Sequence[str] = (), **options: Any
 ) -> tuple[Model, ...]:
     """Resolve several models (see ``resolve``); a name used twice, or already ``taken``, is refused."""
-    resolved = tuple(resolve(model, **options) for model in models)
+    resolved = tuple(resolve(model, **options) for model in listed(models, "forecast.models", '["historical"]'))
     seen = set(taken)
     for model in resolved:
         if model.name in seen:
             raise StudyError("two models of the same name", value=model.name, remedy="Give each its own name.")
         seen.add(model.name)
     return resolved
+
+
+def _check_named(model: Model, every_start: bool) -> None:
+    """Refuse a pair that goes by the name of a named model and is another one; window and recalibration may differ."""
+    if model.name in NAMED:
+        options, name = NAMED[model.name], model.name
+        if (model.filter, model.tail) != (_filter(options, name, every_start), _tail(options, name)):
+            rule = f"{name} is filter {options['filter']!r} and tail {options['tail']!r} with their usual options"
+            what, remedy = "a pair bears the name of another, a named model", "Give the pair a name of its own."
+            raise StudyError(what, value=name, place="forecast.model", rule=rule, remedy=remedy)
 
 
 def _check_keys(options: Mapping[str, Any]) -> None:
@@ -190,6 +234,10 @@ def _pick(options: Mapping[str, Any], key: str, default: str, known: Sequence[st
     return value
 
 
+def _share(options: Mapping[str, Any], key: str, default: float, below: float, name: str) -> float:
+    return fraction(options.get(key, default), f"model {name!r}, {key}", above=0.0, below=below)
+
+
 def _refuse_strangers(options: Mapping[str, Any], kind: str, table: Mapping[str, tuple[str, ...]], name: str) -> None:
     for key in {o for group in table.values() for o in group} - set(table[kind]):
         if key in options and key != "recalibrate_days":
@@ -199,13 +247,15 @@ def _refuse_strangers(options: Mapping[str, Any], kind: str, table: Mapping[str,
 
 
 def _filter(options: Mapping[str, Any], name: str, every_start: bool) -> FilterSpec:
-    kind = _pick(options, "filter", "none", tuple(_FILTER_OPTIONS), name)
+    kind, _, process = _pick(options, "filter", "none", _FILTER_NAMES, name).partition(":")
     _refuse_strangers(options, kind, _FILTER_OPTIONS, name)
     if kind == "ewma":
-        return FilterSpec(kind, decay=float(options.get("decay", 0.94)))
+        return FilterSpec(kind, decay=_share(options, "decay", 0.94, 1.0, name))
     if kind in ESTIMATED:
         defaults = (("mean", "ar1"), ("start", STARTS[0]), ("innovations", INNOVATIONS[0]))
         mean, start, law = (_pick(options, key, default, _CHOICES[key], name) for key, default in defaults)
+        if process:
+            return FilterSpec(kind, mean=mean, innovations=law, process=process)
         return FilterSpec(kind, mean=mean, start=start, innovations=law, every_start=every_start)
     return FilterSpec(kind)
 
@@ -214,16 +264,17 @@ def _tail(options: Mapping[str, Any], name: str) -> TailSpec:
     kind = _pick(options, "tail", "empirical", tuple(_TAIL_OPTIONS), name)
     _refuse_strangers(options, kind, _TAIL_OPTIONS, name)
     if kind == "age-weighted":
-        return TailSpec(kind, decay=float(options.get("age_decay", 0.99)))
+        return TailSpec(kind, decay=_share(options, "age_decay", 0.99, 1.0, name))
     if kind != "gpd":
         return TailSpec(kind)
     fit = _pick(options, "gpd_fit", "ml", _CHOICES["gpd_fit"], name)
-    return TailSpec(kind, share=float(options.get("tail_share", 0.10)), fit=fit)
+    return TailSpec(kind, share=_share(options, "tail_share", 0.10, 0.5, name), fit=fit)
 
 
 def _estimated_line(model: Model, process: str) -> str:
     f = model.filter
-    process = f"a {f.mean} mean and {process} volatility by {_BY_LAW[f.innovations]} (start {f.start})"
+    start = f" (start {f.start})" if f.start else ""
+    process = f"a {f.mean} mean and {process} volatility by {_BY_LAW[f.innovations]}{start}"
     return f"last {model.window} losses through {process}"
 
 

@@ -1,7 +1,7 @@
 """Tails: what describes the residuals beyond the level. One function a tail, one place to register it."""
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -20,7 +20,8 @@ class Tailed:
     """A tail rolled over the residuals of a block.
 
     quantile, shortfall (n, L) in residual units; status (n) of words; tail (n, 3): shape, scale, threshold of a
-    generalized Pareto tail, NaN for the others; pit: the law as a function of one residual a row.
+    generalized Pareto tail, NaN for the others; pit: the law as a function of one residual a row; laws (n, 4: mode,
+    scale, nu, lambda) where the tail is a normal, t or skewed t law, else empty.
     """
 
     quantile: np.ndarray
@@ -28,6 +29,7 @@ class Tailed:
     status: np.ndarray
     tail: np.ndarray
     pit: Callable[[np.ndarray], np.ndarray]
+    laws: np.ndarray = field(default_factory=lambda: np.empty((0, 4)))
 
 
 GPD_WORDS = {
@@ -64,7 +66,7 @@ def _normal(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.n
     laws = np.tile([0.0, 1.0, np.inf, 0.0], (n, 1))
     if not filtered.law:
         laws[:, 0], laws[:, 1] = residuals.mean(axis=1), residuals.std(axis=1)
-    return _plain(*read_laws(laws, levels), lambda values: law_pit(laws, values))
+    return _lawful(laws, levels, np.full(n, "", dtype=object))
 
 
 def _student(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.ndarray) -> Tailed:
@@ -76,19 +78,18 @@ def _student(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.
     laws, bits = student_fit.roll_student(
         filtered.residuals, given, filtered.law != "", spec.kind == "skew-t", places, RUN_DAYS
     )
-    quantile, shortfall = read_laws(laws, levels)
-    return _plain(quantile, shortfall, lambda values: law_pit(laws, values), words(bits, LAW_WORDS))
+    return _lawful(laws, levels, words(bits, LAW_WORDS))
 
 
-def _plain(
-    quantile: np.ndarray,
-    shortfall: np.ndarray,
-    pit: Callable[[np.ndarray], np.ndarray],
-    status: np.ndarray | None = None,
-) -> Tailed:
+def _plain(quantile: np.ndarray, shortfall: np.ndarray, pit: Callable[[np.ndarray], np.ndarray]) -> Tailed:
     n = len(quantile)
-    words_ = np.full(n, "", dtype=object) if status is None else status
-    return Tailed(quantile, shortfall, words_, np.full((n, 3), np.nan), pit)
+    return Tailed(quantile, shortfall, np.full(n, "", dtype=object), np.full((n, 3), np.nan), pit)
+
+
+def _lawful(laws: np.ndarray, levels: np.ndarray, status: np.ndarray) -> Tailed:
+    quantile, shortfall = read_laws(laws, levels)
+    none = np.full((len(laws), 3), np.nan)
+    return Tailed(quantile, shortfall, status, none, lambda values: law_pit(laws, values), laws)
 
 
 def _gpd(filtered: Filtered, spec: TailSpec, levels: np.ndarray, places: np.ndarray) -> Tailed:

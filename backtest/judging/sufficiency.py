@@ -12,6 +12,8 @@ from backtest.records import Result
 
 VAR_SOURCE = "quantile of loss/VaR with order-statistic limits (exact for independent days)"
 ES_SOURCE = "empirical ES of loss/ES, percentile bootstrap over days"
+ES_NOTE = "interval by bootstrap over days, too short with few losses beyond the VaR"
+"""Its coverage falls short at few exceedances, always on the reassuring side: it never says that ES is too high."""
 _WRITTEN = {"var": "VaR", "es": "ES"}
 
 
@@ -47,19 +49,21 @@ def _row(sample: Sample, measure: str, multiple: Multiple, source: str) -> Resul
     notes = multiple.notes
     if multiple.estimate is not None and multiple.high is None:
         notes = (*notes, "no upper limit at this length")
+    if multiple.estimate is not None and measure == "es":
+        notes = (*notes, ES_NOTE)
     return Result(
         desk=sample.desk, model=sample.model, against="", pnl_kind=sample.kind, level=sample.level, first=first,
         last=last, days=multiple.days, exceptions=sample.exceptions, question="by how much",
         test=f"sufficient-{measure}-multiple", statistic=None, p_value=None, law=None, estimate=multiple.estimate,
-        low=multiple.low, high=multiple.high, direction=_direction(multiple, _WRITTEN[measure]), could_see=None,
+        low=multiple.low, high=multiple.high, direction=_direction(multiple, measure), could_see=None,
         decision="", decision_across_desks="", phrase="", note="; ".join(notes), source=source,
     )  # fmt: skip
 
 
 def _direction(multiple: Multiple, measure: str) -> str:
-    """Say what the interval says: short of the losses, more than they asked for, or neither."""
+    """Say what the interval says: short of the losses, more than they asked for (VaR alone), or neither."""
     if multiple.low is not None and multiple.low > 1.0:
-        return f"{measure} too low"
-    if multiple.high is not None and multiple.high < 1.0:
-        return f"{measure} too high"
+        return f"{_WRITTEN[measure]} too low"
+    if measure == "var" and multiple.high is not None and multiple.high < 1.0:
+        return f"{_WRITTEN[measure]} too high"
     return ""

@@ -77,11 +77,23 @@ def is_warm() -> bool:
 
 def compiled(function: Function) -> Function:
     """Compile a kernel on first use (nopython, without the interpreter lock), cached where a folder is writable."""
+    return _jit(function, {})
+
+
+def inner(function: Function) -> Function:
+    """Compile a kernel that only kernels call, without a door from Python: the door takes as long as the code."""
+    return _jit(function, {"no_cpython_wrapper": True, "no_cfunc_wrapper": True})
+
+
+def _jit(function: Function, options: dict[str, bool]) -> Function:
     config: Any = numba.config
     kept = config.CACHE_DIR
     config.CACHE_DIR = str(_FOLDER or "")
     try:
-        jitted: Any = numba.njit(nogil=True, fastmath=_MATHS, error_model="numpy", cache=_FOLDER is not None)(function)
+        jit: Any = numba.njit
+        made: Any = jit(nogil=True, fastmath=_MATHS, error_model="numpy", cache=_FOLDER is not None, **options)(
+            function
+        )
     finally:
         config.CACHE_DIR = kept
-    return cast(Function, jitted)
+    return cast(Function, made)

@@ -2,21 +2,21 @@
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled
+from backtest.kernels.compiled import compiled, inner
 from backtest.kernels.lanes import WIDTH, load, spread, square_root, store, where_positive
 from backtest.kernels.parameters import ALPHA, BETA, COUNT, GAMMA, OMEGA, PHI, C
-from backtest.kernels.past import Pasts, prepare
+from backtest.kernels.past import FIXED, SCALE, Pasts, prepare
 from backtest.kernels.rolling import Member
 from backtest.kernels.start import first_variance
-from backtest.kernels.terms import Pass
+from backtest.kernels.terms import AFTER, THETA, VALUE
 
 
-@compiled
-def filter_lanes(p: Pass, x: np.ndarray, skip: int, residuals: np.ndarray) -> None:
+@inner
+def filter_lanes(p: np.ndarray, x: np.ndarray, skip: int, residuals: np.ndarray) -> None:
     """Filter eight pasts (W, lanes) into ``residuals``, from row ``skip``; value: next mean, after: next variance."""
-    c, phi, omega = load(p.theta, C), load(p.theta, PHI), load(p.theta, OMEGA)
-    alpha, gamma, beta = load(p.theta, ALPHA), load(p.theta, GAMMA), load(p.theta, BETA)
-    zero, h = spread(0.0), load(p.after, 0)
+    c, phi, omega = load(p, THETA + C), load(p, THETA + PHI), load(p, THETA + OMEGA)
+    alpha, gamma, beta = load(p, THETA + ALPHA), load(p, THETA + GAMMA), load(p, THETA + BETA)
+    zero, h = spread(0.0), load(p, AFTER)
     lag = load(x, 0) if skip else zero
     for t in range(skip, x.shape[0]):
         now = load(x, t)
@@ -25,13 +25,13 @@ def filter_lanes(p: Pass, x: np.ndarray, skip: int, residuals: np.ndarray) -> No
         square = e * e
         h = omega + alpha * square + gamma * where_positive(e, square, zero) + beta * h
         lag = now
-    store(p.value, 0, c + phi * lag)
-    store(p.after, 0, h)
+    store(p, VALUE, c + phi * lag)
+    store(p, AFTER, h)
 
 
 @compiled
 def filter_rows(
-    values: np.ndarray, chosen: np.ndarray, parameters: np.ndarray, pasts: Pasts, p: Pass, pad: np.ndarray,
+    values: np.ndarray, chosen: np.ndarray, parameters: np.ndarray, pasts: Pasts, p: np.ndarray, pad: np.ndarray,
     member: Member, residuals: np.ndarray, ahead: np.ndarray,
 ) -> None:  # fmt: skip
     """Filter the ``chosen`` rows of ``values`` (n, W) by ``parameters`` (n, COUNT), units of the losses.
@@ -46,17 +46,17 @@ def filter_rows(
             row = chosen[base + lane]
             varies = prepare(pasts, lane, values[row], member.mean, member.start, skip)
             if not varies:
-                p.after[0, lane] = np.nan
+                p[AFTER, lane] = np.nan
                 continue
-            scale = pasts.scale[lane]
+            scale = pasts.facts[lane, SCALE]
             for i in range(COUNT):
                 unit = 1.0 / scale if i == C else (1.0 / (scale * scale) if i == OMEGA else 1.0)
-                p.theta[i, lane] = parameters[row, i] * unit
-            fixed, moments = pasts.fixed[lane], pasts.moments[lane]
-            p.after[0, lane] = first_variance(p.theta, lane, member.start, fixed, moments, p.d)
+                p[THETA + i, lane] = parameters[row, i] * unit
+            fixed, moments = pasts.facts[lane, FIXED], pasts.facts[lane]
+            p[AFTER, lane] = first_variance(p, lane, member.start, fixed, moments)
         filter_lanes(p, pasts.x, skip, pad)
         for lane in range(lanes):
-            row, scale = chosen[base + lane], pasts.scale[lane]
+            row, scale = chosen[base + lane], pasts.facts[lane, SCALE]
             for t in range(skip, pad.shape[0]):
                 residuals[row, t - skip] = pad[t, lane]
-            ahead[row, 0], ahead[row, 1] = scale * p.value[0, lane], scale * np.sqrt(p.after[0, lane])
+            ahead[row, 0], ahead[row, 1] = scale * p[VALUE, lane], scale * np.sqrt(p[AFTER, lane])

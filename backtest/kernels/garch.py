@@ -23,7 +23,19 @@ from backtest.kernels.parameters import (
     C,
 )  # fmt: skip
 from backtest.kernels.past import new_pasts
-from backtest.kernels.rolling import CONSTANT, NOT_CONVERGED, RUN_DAYS, Fits, Member, Rows, fit_rows, new_chains
+from backtest.kernels.precision import curvature_rows, next_day_spread
+from backtest.kernels.rolling import (
+    CONSTANT,
+    FOUND,
+    LOGLIK,
+    NOT_CONVERGED,
+    RUN_DAYS,
+    SECOND_SIGMA,
+    Member,
+    Rows,
+    fit_rows,
+    new_chains,
+)
 from backtest.kernels.search import new_search
 from backtest.kernels.terms import aligned, new_pass
 
@@ -37,7 +49,8 @@ class Rolled(NamedTuple):
 
     parameters (n, COUNT), NaN where a past was not filtered by them; loglik (n), NaN where not fitted that day;
     second_sigma (n) of a second optimum, NaN where there is none; mean, sigma (n) of the next day; status bits (n);
-    residuals (n, W - skip).
+    residuals (n, W - skip); uncertainty (n, 3): variances of next mean and next sigma and their covariance, zero where
+    not fitted or not asked for.
     """
 
     parameters: np.ndarray
@@ -47,6 +60,7 @@ class Rolled(NamedTuple):
     sigma: np.ndarray
     status: np.ndarray
     residuals: np.ndarray
+    uncertainty: np.ndarray
 
 
 def member(mean: int, start: int, *, gjr: bool = False, shapes: int = 0, every_start: bool = False) -> Member:
@@ -58,7 +72,9 @@ def member(mean: int, start: int, *, gjr: bool = False, shapes: int = 0, every_s
     return Member(np.array(free, dtype=np.int64), mean, start, shapes, skip, cap, gjr, every_start)
 
 
-def roll(pasts: np.ndarray, places: np.ndarray, refit: np.ndarray, chosen: Member) -> Rolled:
+def roll(
+    pasts: np.ndarray, places: np.ndarray, refit: np.ndarray, chosen: Member, *, uncertain: bool = False
+) -> Rolled:
     """Fit where ``refit`` and filter each row of ``pasts`` (n, W), contiguous, in order of days.
 
     ``places`` (n) are weekday numbers. A past that does not vary is forecast to repeat its last value, with sigma 0; a
@@ -68,23 +84,31 @@ def roll(pasts: np.ndarray, places: np.ndarray, refit: np.ndarray, chosen: Membe
     rows = np.flatnonzero(refit)
     edges = np.flatnonzero(np.diff(places[rows] // RUN_DAYS)) + 1
     runs = Rows(rows, np.concatenate([[0], edges, [rows.size]]).astype(np.int64), places)
-    fits = Fits(np.full((n, COUNT), np.nan), np.full((n, 2), np.nan), np.zeros(n, np.int64))
+    found, status = np.full((n, FOUND), np.nan), np.zeros(n, np.int64)
     lanes, work = new_pasts(W), new_pass()
     flags = (chosen.mean in (AR1, AR1_NO_INTERCEPT), chosen.gjr, chosen.shapes > 0, chosen.shapes > 1)
-    fit_rows(pasts, lanes, work, new_search(), new_chains(), runs, chosen, fits, *(True if f else None for f in flags))
-    status = inherit(fits, refit, places)
+    chosen_law = [True if flag else None for flag in flags]
+    fit_rows(pasts, lanes, work, new_search(), new_chains(), runs, chosen, found, status, *chosen_law)
+    inherit(found, status, refit, places)
     ahead, residuals = np.full((n, 2), np.nan), np.empty((n, W - chosen.skip))
     filtered = np.flatnonzero(status & (CONSTANT | AS_EWMA) == 0)
-    filter_rows(pasts, filtered, fits.parameters, lanes, work, aligned(W, WIDTH), chosen, residuals, ahead)
-    _others(pasts, chosen.skip, status, ahead, residuals)
+    filter_rows(pasts, filtered, found, lanes, work, aligned(W, WIDTH), chosen, residuals, ahead)
+    stand_in(pasts, chosen.skip, status, ahead, residuals)
     unused = status & (CONSTANT | AS_EWMA) > 0
-    fits.parameters[unused] = np.nan
-    return Rolled(fits.parameters, fits.numbers[:, 0], fits.numbers[:, 1], ahead[:, 0], ahead[:, 1], status, residuals)
+    uncertainty = np.zeros((n, 3))
+    if uncertain and filtered.size:
+        curvature, slopes = np.zeros((n, COUNT * COUNT)), np.ones((n, COUNT + 3))
+        curvature_rows(pasts, filtered, found, lanes, work, chosen, curvature, slopes, *chosen_law)
+        ahead_of = filtered[ahead[filtered, 1] > 0.0]
+        parts = (curvature[ahead_of], slopes[ahead_of], found[ahead_of, :COUNT])
+        uncertainty[ahead_of] = next_day_spread(*parts, chosen.free, chosen.cap)
+    found[unused, :COUNT] = np.nan
+    parameters, loglik, second = found[:, :COUNT], found[:, LOGLIK], found[:, SECOND_SIGMA]
+    return Rolled(parameters, loglik, second, ahead[:, 0], ahead[:, 1], status, residuals, uncertainty)
 
 
-def inherit(fits: Fits, refit: np.ndarray, places: np.ndarray) -> np.ndarray:
-    """Give each row the parameters it is filtered by, in place, and return its status with the fallback taken."""
-    status = fits.status.copy()
+def inherit(found: np.ndarray, status: np.ndarray, refit: np.ndarray, places: np.ndarray) -> None:
+    """Give each row, in place, the parameters it is filtered by, and its status the fallback taken."""
     run, good, used = -1, -1, -1
     for i in range(len(status)):
         if places[i] // RUN_DAYS != run:
@@ -98,11 +122,10 @@ def inherit(fits: Fits, refit: np.ndarray, places: np.ndarray) -> np.ndarray:
         elif used < 0:
             status[i] = AS_EWMA
         if used >= 0 and used != i:
-            fits.parameters[i] = fits.parameters[used]
-    return status
+            found[i, :COUNT] = found[used, :COUNT]
 
 
-def _others(pasts: np.ndarray, skip: int, status: np.ndarray, ahead: np.ndarray, residuals: np.ndarray) -> None:
+def stand_in(pasts: np.ndarray, skip: int, status: np.ndarray, ahead: np.ndarray, residuals: np.ndarray) -> None:
     """Forecast what the family could not: constant pasts and, by EWMA, fits that failed."""
     flat = np.isnan(ahead[:, 1]) & (status & AS_EWMA == 0)
     status[flat] = CONSTANT

@@ -6,10 +6,10 @@ maximise g.d - d'Qd/2 subject to A d <= slack, in a handful of dimensions. The b
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled
+from backtest.kernels.compiled import compiled, inner
 
 
-@compiled
+@inner
 def dot(a: np.ndarray, b: np.ndarray) -> float:
     """Return the inner product; loops, since a call into BLAS costs more than the sum of a few numbers."""
     total = 0.0
@@ -79,7 +79,7 @@ def null_basis(A: np.ndarray, active: np.ndarray) -> np.ndarray:
     return Z
 
 
-@compiled
+@inner
 def reduced_step(Q: np.ndarray, gradient: np.ndarray, Z: np.ndarray) -> tuple[np.ndarray, bool]:
     """Return the step of the reduced problem and whether curvature had to be added to make it well posed."""
     n, free = Z.shape
@@ -108,7 +108,7 @@ def reduced_step(Q: np.ndarray, gradient: np.ndarray, Z: np.ndarray) -> tuple[np
     return step, damped
 
 
-@compiled
+@inner
 def multipliers(A: np.ndarray, active: np.ndarray, force: np.ndarray) -> np.ndarray:
     """Return the multipliers of the active rows for a ``force`` (gradient) that they hold, zero for the others."""
     index = np.flatnonzero(active)

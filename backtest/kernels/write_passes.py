@@ -1,6 +1,6 @@
 """Write ``passes.py``: the likelihood pass of every member of the GARCH family, its derivatives written out.
 
-Run ``python -m backtest.kernels.write_passes`` after a change here; a test holds the file to it. Straight lines of
+Run ``python backtest/kernels/write_passes.py`` after a change here; a test holds the file to it. Straight lines of
 assignments keep the recursions in registers; loops over lists of parameters cost three times as much. The terms:
 
   gradient  g_i  += l1 h_i + le e_i
@@ -22,11 +22,13 @@ HEAD = '''"""Written by write_passes.py, not by hand: one likelihood pass a memb
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled
+from backtest.kernels.compiled import inner
 from backtest.kernels.lanes import load, spread, square_root, store, where_positive
 from backtest.kernels.laws import K_L, K_LE, K_LL, KAPPA, SIDE, TURN, K, M
 from backtest.kernels.parameters import ALPHA, BETA, COUNT, ETA, GAMMA, LAMBDA, OMEGA, PHI, C
-from backtest.kernels.terms import HALF_LOG_2PI, Pass, add_logs, each_log, even_terms, skew_terms
+from backtest.kernels.terms import (
+    AFTER, D, DD, GRADIENT, HALF_LOG_2PI, HESSIAN, LAW, THETA, VALUE, add_logs, each_log, even_terms, skew_terms,
+)
 '''
 E = {"c": "", "p": " * lag"}
 """What -e_i multiplies a term with."""
@@ -124,21 +126,25 @@ def shape_lines(names: str, law: str) -> list[str]:
 def opening(names: str, law: str) -> list[str]:
     """Return the lines before the loop: parameters, the first day's derivatives, sums at zero."""
     lines = ["zero, one = spread(0.0), spread(1.0)"]
-    lines += [f"{name} = load(p.theta, {name.upper()})" for name in ("omega", "alpha", "beta")]
-    lines += ["c = load(p.theta, C)", "h = load(p.after, 0)"]
-    lines += ["phi = load(p.theta, PHI)"] if "p" in names else []
-    lines += ["gamma = load(p.theta, GAMMA)"] if "g" in names else []
+    lines += [f"{name} = load(p, THETA + {name.upper()})" for name in ("omega", "alpha", "beta")]
+    lines += ["c = load(p, THETA + C)", "h = load(p, AFTER)"]
+    lines += ["phi = load(p, THETA + PHI)"] if "p" in names else []
+    lines += ["gamma = load(p, THETA + GAMMA)"] if "g" in names else []
     if law != "normal":
-        lines += ["kappa, kappa1, kappa2 = load(p.law, KAPPA), load(p.law, KAPPA + 1), load(p.law, KAPPA + 2)"]
-        lines += ["m, m1, m2 = load(p.law, M), load(p.law, M + 1), load(p.law, M + 2)", "logs = zero", "weights = one"]
+        lines += ["kappa, kappa1, kappa2 = load(p, LAW + KAPPA), load(p, LAW + KAPPA + 1), load(p, LAW + KAPPA + 2)"]
+        lines += [
+            "m, m1, m2 = load(p, LAW + M), load(p, LAW + M + 1), load(p, LAW + M + 2)",
+            "logs = zero",
+            "weights = one",
+        ]
     if law == "skew":
-        lines += ["turn = load(p.law, TURN)"]
+        lines += ["turn = load(p, LAW + TURN)"]
         for n, side in enumerate(("left", "right")):
             for k, name in enumerate(f"{x}{d}" for x in "AB" for d in DERIVED):
-                lines.append(f"{name}_{side} = load(p.law, SIDE[{n}] + {k})")
-    lines += [f"h{i} = load(p.d, {LETTERS[i]})" for i in names]
+                lines.append(f"{name}_{side} = load(p, LAW + SIDE[{n}] + {k})")
+    lines += [f"h{i} = load(p, D + {LETTERS[i]})" for i in names]
     moving = [(i, j) for i, j in pairs(names) if moves(i, j)]
-    lines += [f"h{i}{j} = load(p.dd, {LETTERS[i]} * COUNT + {LETTERS[j]})" for i, j in moving]
+    lines += [f"h{i}{j} = load(p, DD + {LETTERS[i]} * COUNT + {LETTERS[j]})" for i, j in moving]
     sums = [f"g{i}" for i in names] + [f"s{i}{j}" for i, j in pairs(names)]
     sums += {"normal": ["total"], "tails": ["ratio", "fourth"], "skew": ["f_l", "f_e", "f_ll", "f_le", "f_ee"]}[law]
     sums += [f"x{i}{s}" for s in {"normal": "", "tails": "e", "skew": "el"}[law] for i in names]
@@ -168,18 +174,18 @@ def day(names: str, law: str) -> list[str]:
 def closing(names: str, law: str) -> list[str]:
     """Return the lines after the loop: logarithms left over, results stored."""
     lines = ["add_logs(p, product)", "days = x.shape[0] - skip"]
-    value = "load(p.value, 0) - 0.5 * total - HALF_LOG_2PI * days"
+    value = "load(p, VALUE) - 0.5 * total - HALF_LOG_2PI * days"
     if law != "normal":
         lines += ["logs += each_log(p, weights)"]
-        value = "load(p.value, 0) + load(p.law, K) * days - m * logs"
-    lines += [f"store(p.value, 0, {value})", "store(p.after, 0, h)"]
-    lines += [f"store(p.gradient, {LETTERS[i]}, g{i})" for i in names]
-    lines += [f"store(p.d, {LETTERS[i]}, h{i})" for i in names]
+        value = "load(p, VALUE) + load(p, LAW + K) * days - m * logs"
+    lines += [f"store(p, VALUE, {value})", "store(p, AFTER, h)"]
+    lines += [f"store(p, GRADIENT + {LETTERS[i]}, g{i})" for i in names]
+    lines += [f"store(p, D + {LETTERS[i]}, h{i})" for i in names]
     for i, j in pairs(names):
-        extra = "" if moves(i, j) else f" + load(p.dd, {LETTERS[i]} * COUNT + {LETTERS[j]}) * faded"
-        lines.append(f"store(p.hessian, {LETTERS[i]} * COUNT + {LETTERS[j]}, s{i}{j}{extra})")
+        extra = "" if moves(i, j) else f" + load(p, DD + {LETTERS[i]} * COUNT + {LETTERS[j]}) * faded"
+        lines.append(f"store(p, HESSIAN + {LETTERS[i]} * COUNT + {LETTERS[j]}, s{i}{j}{extra})")
     lines += [
-        f"store(p.hessian, {LETTERS[i]} * COUNT + {'ETA' if s == 'e' else 'LAMBDA'}, x{i}{s})"
+        f"store(p, HESSIAN + {LETTERS[i]} * COUNT + {'ETA' if s == 'e' else 'LAMBDA'}, x{i}{s})"
         for s in {"normal": "", "tails": "e", "skew": "el"}[law]
         for i in names
     ]
@@ -189,16 +195,16 @@ def closing(names: str, law: str) -> list[str]:
 CLOSING = {
     "normal": [],
     "tails": [
-        "store(p.gradient, ETA, load(p.law, K + 1) * days - m1 * logs - m * kappa1 * ratio)",
-        "bend = load(p.law, K + 2) * days - m2 * logs - (2.0 * m1 * kappa1 + m * kappa2) * ratio",
-        "store(p.hessian, ETA * COUNT + ETA, bend + m * kappa1 * kappa1 * fourth)",
+        "store(p, GRADIENT + ETA, load(p, LAW + K + 1) * days - m1 * logs - m * kappa1 * ratio)",
+        "bend = load(p, LAW + K + 2) * days - m2 * logs - (2.0 * m1 * kappa1 + m * kappa2) * ratio",
+        "store(p, HESSIAN + ETA * COUNT + ETA, bend + m * kappa1 * kappa1 * fourth)",
     ],
     "skew": [
-        "store(p.gradient, ETA, load(p.law, K + 1) * days - m1 * logs + f_e)",
-        "store(p.gradient, LAMBDA, load(p.law, K_L) * days + f_l)",
-        "store(p.hessian, ETA * COUNT + ETA, load(p.law, K + 2) * days - m2 * logs + f_ee)",
-        "store(p.hessian, ETA * COUNT + LAMBDA, load(p.law, K_LE) * days + f_le)",
-        "store(p.hessian, LAMBDA * COUNT + LAMBDA, load(p.law, K_LL) * days + f_ll)",
+        "store(p, GRADIENT + ETA, load(p, LAW + K + 1) * days - m1 * logs + f_e)",
+        "store(p, GRADIENT + LAMBDA, load(p, LAW + K_L) * days + f_l)",
+        "store(p, HESSIAN + ETA * COUNT + ETA, load(p, LAW + K + 2) * days - m2 * logs + f_ee)",
+        "store(p, HESSIAN + ETA * COUNT + LAMBDA, load(p, LAW + K_LE) * days + f_le)",
+        "store(p, HESSIAN + LAMBDA * COUNT + LAMBDA, load(p, LAW + K_LL) * days + f_ll)",
     ],
 }
 
@@ -206,7 +212,7 @@ CLOSING = {
 def function(mean: str, variance: str, law: str) -> str:
     """Return one pass as source text."""
     names = MEANS[mean] + VARIANCES[variance]
-    head = f"@compiled\ndef {mean}_{variance}_{law}(p: Pass, x: np.ndarray, skip: int) -> None:\n"
+    head = f"@inner\ndef {mean}_{variance}_{law}(p: np.ndarray, x: np.ndarray, skip: int) -> None:\n"
     doc = f'    """Run a pass: {mean} mean, {variance} variance, {law} law; after ``begin`` for every lane."""\n'
     body = [*opening(names, law), "for t in range(skip, x.shape[0]):", *("    " + line for line in day(names, law))]
     return head + doc + "\n".join("    " + line for line in [*body, *closing(names, law)]) + "\n"

@@ -68,6 +68,38 @@ def vectors_table(vectors: pd.DataFrame, desks: Iterable[str]) -> dict[str, Desk
     return by_desk(names, codes, days, scenarios, pnl, _row_of_vectors, as_of_dated=False)
 
 
+def reported_table(reported: pd.DataFrame | None, desks: Iterable[str]) -> pd.DataFrame:
+    """Return ``date, desk, model, level, var`` of a long table; ``date`` is the target day.
+
+    Rows without a VaR are left out; a table without ``model`` is that of one model, called "reported"; None: no rows.
+    Raises DataError (row, column, value) for a missing column, what is no date or finite number, a level that is none,
+    a desk that is not among ``desks``, a row that stands twice.
+    """
+    columns = ["date", "desk", "model", "level", "var"]
+    if reported is None:
+        return pd.DataFrame({column: pd.Series(dtype=object) for column in columns})
+    table = reported if "model" in reported else reported.assign(model="reported")
+    for column in columns:
+        if column not in table:
+            remedy = "The table needs date, desk, level and var."
+            raise DataError("a column is missing", value=column, place="reported", remedy=remedy)
+    numbers = {column: _numbers(table[column], column, "reported") for column in ("level", "var")}
+    wrong = ~((numbers["level"] > 0.5) & (numbers["level"] < 1.0))
+    if wrong.any():
+        row = int(np.argmax(wrong))
+        remedy = "A level is a confidence such as 0.99, never 1 or 99."
+        raise DataError("not a level", value=numbers["level"][row], place=f"reported, row {row}, level", remedy=remedy)
+    names = {column: table[column].astype(str).to_numpy() for column in ("desk", "model")}
+    for name in sorted(set(names["desk"]) - set(desks)):
+        raise DataError("an unknown desk", value=name, place="reported, desk", remedy=near_miss(name, desks))
+    out = pd.DataFrame({"date": _dates(table["date"], "date", "reported"), **names, **numbers})[columns]
+    twice = out.duplicated(columns[:-1]).to_numpy()
+    if twice.any():
+        place = f"reported, row {int(np.argmax(twice))}"
+        raise DataError("the same date, desk, model and level stand twice", place=place, remedy="Keep one row.")
+    return out[out["var"].notna()].reset_index(drop=True)
+
+
 def _row_of_vectors(row: int, column: str) -> str:
     return f"vectors, row {row}, {column}"
 

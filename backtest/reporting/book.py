@@ -170,8 +170,13 @@ class Book:
         return days.merge(own, on="date", how="left")[["date", "loss", "var", "es"]]
 
     def forecasts(self, desk: str) -> pd.DataFrame:
-        """Return the forecasts of a desk."""
+        """Return the one-day forecasts of a desk."""
         return self._forecasts.get(desk, self.record.forecasts.iloc[:0])
+
+    @cached_property
+    def one_day(self) -> pd.DataFrame:
+        """The forecasts of one day's loss; those over several days are recorded, not judged."""
+        return self.record.forecasts[self.record.forecasts["horizon"] == 1]
 
     def pnl(self, desk: str) -> pd.DataFrame:
         """Return the P&L of a desk."""
@@ -179,7 +184,7 @@ class Book:
 
     @cached_property
     def _forecasts(self) -> dict[str, pd.DataFrame]:
-        return {str(desk): rows for desk, rows in self.record.forecasts.groupby("desk", observed=True)}
+        return {str(desk): rows for desk, rows in self.one_day.groupby("desk", observed=True)}
 
     @cached_property
     def _pnl(self) -> dict[str, pd.DataFrame]:

@@ -1,14 +1,15 @@
 """Lines for a terminal on what was read, before there is any record."""
 
 from backtest.records import Inputs, Remark
+from backtest.reporting import wording as say
 
 
 def input_lines(inputs: Inputs) -> list[str]:
     """Return lines on files, desks, days and every remark of checked inputs."""
-    lines = [f"{s.role}: {s.name}, {s.rows:,} rows, sha256 {s.sha256[:12]}" for s in inputs.sources]
+    lines = [f"{s.role}: {s.name}, {say.plural(s.rows, 'row')}, sha256 {s.sha256[:12]}" for s in inputs.sources]
     desks, days = inputs.pnl["desk"].nunique(), len(inputs.calendar)
-    lines.append(f"{desks} desks, {days:,} business days, {inputs.calendar[0]} to {inputs.as_of} (cut-off)")
-    lines.append(f"{len(inputs.remarks)} remarks" + (":" if inputs.remarks else ""))
+    lines.append(f"{say.plural(desks, 'desk')}, {say.plural(days, 'business day')}, {inputs.calendar[0]} to {inputs.as_of} (cut-off)")
+    lines.append(say.plural(len(inputs.remarks), "remark") + (":" if inputs.remarks else ""))
     return lines + [remark_line(remark) for remark in inputs.remarks]
 
 

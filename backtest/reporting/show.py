@@ -28,7 +28,8 @@ def day_view(record: Record, desk: str, date: str | dt.date | np.datetime64) -> 
         raise RecordError("the desk has no such day", value=str(day), place=desk, remedy=remedy)
     losses = pnl[pnl["date"] == pd.Timestamp(day)]
     lines = [f"{desk}, {day}", *_pnl_lines(losses, book.currency), ""]
-    rows = forecasts[forecasts["date"] == pd.Timestamp(day)]
+    every = record.forecasts
+    rows = every[(every["desk"] == desk) & (every["date"] == pd.Timestamp(day))]
     return lines + (_forecast_lines(rows, losses) if len(rows) else ["No model forecast this day."])
 
 
@@ -58,18 +59,30 @@ _WIDTHS = (20, 6, 10, 13, 13, 12, 14)
 def _forecast_lines(rows: pd.DataFrame, losses: pd.DataFrame) -> list[str]:
     lines = _lines(("model", "level", "origin", "VaR", "ES", "exception", "status"))
     for _, row in _ordered(rows).iterrows():
-        lines += _lines((*_cells(row, losses), text(row["status"])))
+        lines += _lines((*_cells(row, losses), text(row["status"]))) + _interval(row)
     return lines
 
 
+def _interval(row: "pd.Series") -> list[str]:
+    """Return the line of the 95% intervals from estimation error, none where the record has none."""
+    ends = [given(row[name]) for name in ("var_low", "var_high", "es_low", "es_high")]
+    if any(end is None for end in ends):
+        return []
+    low, high, es_low, es_high = (say.amount(end) for end in ends if end is not None)
+    return [f"    95% interval from estimation error: VaR {low} to {high}, ES {es_low} to {es_high}"]
+
+
 def _ordered(rows: pd.DataFrame) -> pd.DataFrame:
-    return rows.assign(place=pd.factorize(rows["model"])[0]).sort_values(["place", "level"])
+    return rows.assign(place=pd.factorize(rows["model"])[0]).sort_values(["horizon", "place", "level"])
 
 
 def _cells(row: "pd.Series", losses: pd.DataFrame) -> tuple[str, ...]:
     var, es = given(row["var"]), given(row["es"])
     amounts = [say.DASH if v is None else say.amount(v) for v in (var, es)]
-    return (str(row["model"]), say.level(row["level"]), say.date(row["origin"]), *amounts, _exception(var, losses))
+    days = int(row["horizon"])
+    name = str(row["model"]) if days == 1 else f"{row['model']}, {days} days"
+    exception = _exception(var, losses) if days == 1 else say.DASH
+    return (name, say.level(row["level"]), say.date(row["origin"]), *amounts, exception)
 
 
 def _exception(var: float | None, losses: pd.DataFrame) -> str:

@@ -1,11 +1,13 @@
 """Tables of the page as ready strings: results, challengers, bridge."""
 
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 from backtest.reporting import wording as say
 from backtest.reporting.book import BY_RULE, Book, Row, Span, given, text
+from backtest.reporting.effects import NO_UNIT, TICK, estimate, score_amount, test_name
 from backtest.reporting.facts import Bridge, Step
+from backtest.reporting.prose import answer, notes_on, prose
 
 
 @dataclass(frozen=True)
@@ -31,42 +33,6 @@ def table(
     return Table(caption, names, tuple(tuple(r) for r in rows), tuple(n in figures for n in names), note)
 
 
-TESTS = {
-    "binomial": ("Exact binomial", "share"),
-    "kupiec": ("Kupiec, share of failures", "share"),
-    "christoffersen-independence": ("Christoffersen, independence", "points"),
-    "christoffersen-coverage": ("Christoffersen, coverage", "points"),
-    "mcneil-frey": ("McNeil and Frey, ES residuals", "multiple"),
-    "acerbi-szekely-2": ("Acerbi and Szekely, statistic 2", "multiple"),
-    "diebold-mariano": ("Diebold and Mariano, scores", "number"),
-    "basel-zone": ("Zone by rule", "multiplier"),
-    "sufficient-var-multiple": ("sufficient multiple of VaR", "multiple"),
-    "sufficient-es-multiple": ("sufficient multiple of ES", "multiple"),
-}
-"""Readable name of a test and the unit of its estimate; a test that is not listed shows its key and a plain number."""
-_UNITS: dict[str, Callable[[float], str]] = {
-    "share": say.percent,
-    "points": lambda value: f"{say.points(value)} points",
-    "number": say.number,
-    "multiple": lambda value: f"{say.multiple(value)} times",
-    "multiplier": say.multiple,
-}
-
-
-def estimate(row: Row) -> str:
-    """Return the effect size of a result with its interval, in its unit; a dash where there is none."""
-    value, low, high = (given(row[c]) for c in ("estimate", "low", "high"))
-    unit = TESTS.get(row["test"], ("", "number"))[1]
-    if value is None:
-        return say.DASH
-    show = _UNITS[unit]
-    if unit == "multiple":
-        return f"{show(value)} [{say.interval(low, high)}]"
-    if low is None or high is None:
-        return show(value)
-    return f"{show(value)} [{show(low).removesuffix(' points')} to {show(high).removesuffix(' points')}]"
-
-
 def span_words(span: Span) -> str:
     """Return "250 days, 2025-01-02 to 2025-12-31"."""
     return f"{say.plural(span.days, 'day')}, {span.first} to {span.last}"
@@ -88,10 +54,10 @@ def result_tables(book: Book, desk: str, model: str) -> tuple[Table, ...]:
             if rows:
                 own = max(rows, key=lambda r: r["days"])
                 days = span_words(Span(span.place, own["from"], own["to"], own["days"]))
-                notes = _notes(rows) if span == main else "The notes on these results stand in results.csv."
+                notes = notes_on(rows) if span == main else "The notes on these results stand in results.csv."
                 tables.append(_results(book, rows, f"{say.name(model)}, {kind} P&L, {days}", notes))
     rule = book.results(desk, model, question=BY_RULE)
-    return tuple(tables + [_results(book, rule, f"{say.name(model)}, by rule", _notes(rule))] * bool(rule))
+    return tuple(tables + [_results(book, rule, f"{say.name(model)}, by rule", notes_on(rule))] * bool(rule))
 
 
 def _same(one: Span, other: Span) -> bool:
@@ -103,33 +69,10 @@ def _results(book: Book, rows: list[Row], caption: str, notes: str) -> Table:
     return table(caption, RESULT_HEADER, [_result(r, book) for r in ordered], _RESULT_FIGURES, notes)
 
 
-def _notes(rows: list[Row]) -> str:
-    """Return the notes of results, test by test; a part that is not said of every level names its levels."""
-    levels: dict[str, set[float]] = {}
-    parts: dict[str, dict[str, set[float]]] = {}
-    for row in sorted(rows, key=lambda r: r["level"]):
-        levels.setdefault(_name(row), set()).add(row["level"])
-        for part in filter(None, text(row["note"]).split("; ")):
-            parts.setdefault(_name(row), {}).setdefault(part, set()).add(row["level"])
-    said = []
-    for name, found in parts.items():
-        words = [p if at == levels[name] else f"at {_levels(at)} {p}" for p, at in found.items()]
-        said.append(f"{name}: {'; '.join(words)}.")
-    return " ".join(said)
-
-
-def _levels(found: set[float]) -> str:
-    return say.listed([say.level(level) for level in sorted(found)])
-
-
-def _name(row: Row) -> str:
-    return TESTS.get(row["test"], (str(row["test"]), ""))[0]
-
-
 def tests_used(book: Book) -> list[tuple[str, str]]:
     """Return each test of the record with the source it names, in recorded order, once."""
     used = book.record.results[["test", "source"]].drop_duplicates("test")
-    return [(TESTS.get(t, (str(t), ""))[0], text(s) or say.DASH) for t, s in used.itertuples(index=False)]
+    return [(test_name(str(t)), prose(text(s)) or say.DASH) for t, s in used.itertuples(index=False)]
 
 
 def _result(row: Row, book: Book) -> tuple[str, ...]:
@@ -138,14 +81,14 @@ def _result(row: Row, book: Book) -> tuple[str, ...]:
     return (
         say.level(row["level"]),
         text(row["question"]),
-        f"{_name(row)}{against}",
+        f"{test_name(row['test'])}{against}",
         say.whole(row["days"]),
         exceptions_cell(row),
         say.DASH if statistic is None else say.number(statistic),
         p_cell(row, book),
         text(row["law"]) or say.DASH,
-        estimate(row),
-        text(row["phrase"]) or text(row["note"]) or say.DASH,
+        estimate(row, book.currency),
+        answer(row, book),
     )
 
 
@@ -201,7 +144,7 @@ def _compact(book: Book, desk: str, model: str, span: Span, level: float) -> tup
         days,
         exceptions_cell(count),
         *ps,
-        estimate(size) if size else say.DASH,
+        estimate(size, book.currency) if size else say.DASH,
         _score(score, book),
     )
 
@@ -209,9 +152,9 @@ def _compact(book: Book, desk: str, model: str, span: Span, level: float) -> tup
 def _score(row: Row | None, book: Book) -> str:
     p = given(row["p_value"]) if row else None
     if row is None or p is None:
-        return say.DASH if row is None else text(row["phrase"]) or say.DASH
+        return say.DASH if row is None else answer(row, book)
     words = text(row["direction"]) or f"against {text(row['against'])}"
-    return f"{words}: {estimate(row)}, {say.p_value(p, book.significance)}"
+    return f"{words}: {estimate(row, book.currency)}, {say.p_value(p, book.significance)}"
 
 
 BRIDGE_HEADER = (
@@ -228,12 +171,12 @@ def bridge_words(bridge: Bridge) -> str:
 def bridge_table(bridge: Bridge) -> Table:
     """Return a bridge that was built as a table; amounts with their unit, score changes against the step before."""
     level = bridge.level or 0.0
-    days = f"{say.whole(bridge.days)} shared days, {bridge.first} to {bridge.last}"
+    days = f"{say.plural(bridge.days, 'shared day')}, {bridge.first} to {bridge.last}"
     expectation = say.expected(bridge.days, level)
     caption = (
         f"{say.name(bridge.desk)}, {say.level(level)}, {bridge.kind} P&L, {days}; {expectation} exceptions expected"
     )
-    scores = say.listed(sorted({s.score_name for s in bridge.steps if s.score_name}))
+    scores = say.listed([_score_words(s, bridge.currency) for s in sorted({s.score_name for s in bridge.steps} - {""})])
     note = f"Score: {scores}, difference to the step before; below 0 is better." if scores else ""
     remarks = {s.note for s in bridge.steps}
     rows = [_bridge_row(s, bridge.currency) for s in bridge.steps]
@@ -243,12 +186,19 @@ def bridge_table(bridge: Bridge) -> Table:
     return table(caption, BRIDGE_HEADER[:-1], [r[:-1] for r in rows], BRIDGE_HEADER[2:7], said)
 
 
+def _score_words(name: str, currency: str) -> str:
+    return f"{name} ({f'in {currency}' if name == TICK else NO_UNIT})"
+
+
 def _bridge_row(step: Step, currency: str) -> tuple[str, ...]:
     def amount(value: float | None) -> str:
         return say.DASH if value is None else say.money(value, currency)
 
-    change = say.DASH if step.score_change is None else say.number(step.score_change, 3)
+    def show(value: float) -> str:
+        return score_amount(value, step.score_name == TICK, currency)
+
+    change = say.DASH if step.score_change is None else show(step.score_change)
     if step.score_change is not None and step.low is not None and step.high is not None:
-        change += f" [{say.number(step.low, 3)} to {say.number(step.high, 3)}]"
+        change += f" [{show(step.low)} to {show(step.high)}]"
     counts = [say.DASH if n is None else say.whole(n) for n in (step.window, step.exceptions)]
     return (step.name, step.model, *counts, amount(step.average_var), amount(step.average_change), change, step.note)

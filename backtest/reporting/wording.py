@@ -63,7 +63,7 @@ def rate(count: int, days: int, expected_share: float | None = None) -> str:
     """Return "6 of 250 days (2.4%)"; the percentage stays on the side of the expected share where the rate is."""
     if days <= 0:
         return "0 days"
-    return f"{whole(count)} of {whole(days)} days ({percent(count / days, expected_share)})"
+    return f"{whole(count)} of {plural(days, 'day')} ({percent(count / days, expected_share)})"
 
 
 def percent(share: float, mark: float | None = None) -> str:
@@ -164,6 +164,11 @@ def in_hundred(share: float) -> str:
     if 0.5 < cases < 99.5:
         return f"{cases:.0f} of 100"
     return "fewer than 1 of 100" if cases <= 0.5 else "more than 99 of 100"
+
+
+def power(share: float) -> str:
+    """Return a power beside an answer: "60 in 100"."""
+    return in_hundred(share).replace(" of ", " in ")
 
 
 _TURNING = frozenset(("R", "AL", "RLE", "RLO", "LRE", "LRO", "RLI", "LRI", "FSI"))

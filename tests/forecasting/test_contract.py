@@ -16,6 +16,8 @@ FILTERS = [
     {"filter": "ewma"},
     *({"filter": "garch", "mean": mean} for mean in MEANS),
     *({"filter": "garch", "start": start} for start in STARTS[1:]),
+    {"filter": "library:EGARCH", "recalibrate_days": 21},
+    {"filter": "library:APARCH", "recalibrate_days": 21, "mean": "zero", "innovations": "skew-t"},
 ]
 TAILS = [
     {"tail": "empirical"},
@@ -25,7 +27,7 @@ TAILS = [
     {"tail": "skew-t"},
     *({"tail": "gpd", "gpd_fit": fit} for fit in GPD_FITS),
 ]
-EVERY = [{"name": " ".join([*f.values(), *t.values()]), **f, **t} for f in FILTERS for t in TAILS]
+EVERY = [{"name": " ".join(map(str, [*f.values(), *t.values()])), **f, **t} for f in FILTERS for t in TAILS]
 SOME = [pair for i, pair in enumerate(EVERY) if i < 2 * len(TAILS) or i % (len(TAILS) + 1) in (0, 3)]
 """Every tail without a filter and behind the first that has one; every filter with a few tails."""
 WINDOW, DAYS, LEVELS = 300, 340, (0.975, 0.99)

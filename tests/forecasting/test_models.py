@@ -33,6 +33,12 @@ def test_the_garch_default_is_an_ar1_mean_and_the_sample_variance():
         ({"name": "m", "tail": "empirical", "tail_share": 0.1}, "tail_share does not belong to empirical"),
         ({"name": "m", "tail": "t", "age_decay": 0.9}, "age_decay does not belong to t"),
         ({"name": "m", "tail": "gpd", "gpd_fit": "pmw"}, "Did you mean 'pwm'?"),
+        ({"name": "m", "filter": "library:egrach"}, "Did you mean 'library:EGARCH'?"),
+        ({"name": "m", "filter": "libary:GARCH"}, "Did you mean 'library:GARCH'?"),
+        ({"name": "m", "filter": "stochastic volatility"}, "Known: .*library:APARCH, library:ARCH.*reported"),
+        ({"name": "m", "filter": "library:GARCH", "start": "ewma-75"}, "start does not belong to library"),
+        ({"name": "m", "filter": "library:GARCH", "innovations": "ged"}, "Known: normal, skew-t, t"),
+        ({"name": "m", "filter": "reported", "mean": "ar1"}, "mean does not belong to reported"),
         ({"name": "m", "windw": 500}, "Did you mean 'window'?"),
         ({"name": "m", "tail": "gpd", "window": 100}, "at least 20 excesses"),
         ({"name": "m", "tail": "gpd", "tail_share": 0.02}, "the tail starts beyond a level"),
@@ -54,6 +60,7 @@ def test_a_model_may_not_take_the_name_of_the_subject():
 
 
 def test_residuals_are_one_fewer_where_the_first_day_only_conditions():
-    conditioned = resolve({"name": "m", "filter": "garch", "start": "ewma-75"}, levels=LEVELS)
-    assert conditioned.residuals == 999
+    for options in ({"filter": "garch", "start": "ewma-75"}, {"filter": "library:EGARCH"}):
+        assert resolve({"name": "m", **options}, levels=LEVELS).residuals == 999
+    assert resolve({"name": "m", "filter": "library:EGARCH", "mean": "constant"}, levels=LEVELS).residuals == 1000
     assert resolve("filtered-historical", levels=LEVELS).residuals == 1000

@@ -1,17 +1,22 @@
+import itertools
+
 import numpy as np
 import pytest
 
 from backtest.kernels import garch, write_passes
 from backtest.kernels import parameters as P
 from backtest.kernels.likelihood import begin, evaluate
-from backtest.kernels.terms import aligned, new_pass
+from backtest.kernels.terms import GRADIENT, HESSIAN, THETA, VALUE, aligned, new_pass
 from tests.reference.datasets import bmw, dem2gbp
 from tests.reference.garch_plain import log_likelihood
 
-THETA = np.array([0.03, 0.07, 0.05, 0.06, 0.05, 0.83, 0.13, -0.11])
+POINT = np.array([0.03, 0.07, 0.05, 0.06, 0.05, 0.83, 0.13, -0.11])
 STARTS = {"fixed": P.SAMPLE_VARIANCE, "mean-square": P.MEAN_SQUARE, "unconditional": P.UNCONDITIONAL}
+FAST = {("ar1", False, "normal"), ("ar1", True, "tails"), ("constant", True, "skew")}
+"""Every mean, variance and law once; the other members, seconds of compilation each, are in the slow suite."""
 MEMBERS = [
-    (mean, gjr, law) for mean in ("constant", "ar1") for gjr in (False, True) for law in ("normal", "tails", "skew")
+    pytest.param(member, id=" ".join(map(str, member)), marks=() if member in FAST else pytest.mark.slow)
+    for member in itertools.product(("constant", "ar1"), (False, True), ("normal", "tails", "skew"))
 ]
 DAYS, LANE = 200, 3
 
@@ -26,8 +31,8 @@ def point(mean: str, gjr: bool, law: str) -> tuple[np.ndarray, np.ndarray]:
     shapes = {"normal": 0, "tails": 1, "skew": 2}[law]
     kind = P.AR1 if mean == "ar1" else P.CONSTANT_MEAN
     free = garch.member(kind, P.SAMPLE_VARIANCE, gjr=gjr, shapes=shapes).free
-    theta = np.where(np.isin(np.arange(8), free), THETA, 0.0)
-    theta[P.ETA] = THETA[P.ETA]
+    theta = np.where(np.isin(np.arange(8), free), POINT, 0.0)
+    theta[P.ETA] = POINT[P.ETA]
     return theta, free
 
 
@@ -37,7 +42,7 @@ def evaluated(losses, member, start, skip=0):
     x = aligned(DAYS, 8)
     x[:] = losses
     work = new_pass()
-    work.theta[:] = theta[:, None]
+    work[THETA : THETA + 8] = theta[:, None]
     for lane in range(8):
         column = losses[:, lane]
         lag, y = np.concatenate([[0.0], column[:-1]])[skip:], column[skip:]
@@ -45,9 +50,9 @@ def evaluated(losses, member, start, skip=0):
         begin(work, lane, STARTS[start], 1.3, moments, {"normal": 0, "tails": 1, "skew": 2}[law])
     flags = (mean == "ar1", gjr, law != "normal", law == "skew")
     evaluate(work, x, skip, *(True if f else None for f in flags))
-    upper = np.triu(work.hessian.reshape(8, 8, 8)[:, :, LANE])
+    upper = np.triu(work[HESSIAN : HESSIAN + 64, LANE].reshape(8, 8))
     hessian = upper + np.triu(upper, 1).T
-    return work.value[0, LANE], work.gradient[free, LANE], hessian[np.ix_(free, free)], theta, free
+    return work[VALUE, LANE], work[GRADIENT + free, LANE], hessian[np.ix_(free, free)], theta, free
 
 
 def exact_gradient(theta, free, losses, start, skip, law):
@@ -56,7 +61,7 @@ def exact_gradient(theta, free, losses, start, skip, law):
 
 
 @pytest.mark.parametrize("start", STARTS)
-@pytest.mark.parametrize("member", MEMBERS, ids=str)
+@pytest.mark.parametrize("member", MEMBERS)
 def test_value_and_gradient_are_those_of_the_plain_loop(losses, member, start):
     value, gradient, _, theta, free = evaluated(losses, member, start)
     x = losses[:, LANE]
@@ -67,7 +72,7 @@ def test_value_and_gradient_are_those_of_the_plain_loop(losses, member, start):
 
 
 @pytest.mark.parametrize("start", STARTS)
-@pytest.mark.parametrize("member", MEMBERS, ids=str)
+@pytest.mark.parametrize("member", MEMBERS)
 def test_the_hessian_is_the_derivative_of_the_gradient(losses, member, start):
     _, _, hessian, theta, free = evaluated(losses, member, start)
     step = 1e-6
@@ -177,3 +182,30 @@ def test_full_sample_likelihoods_of_the_family(gjr, shapes, value):
     if shapes == 2:
         assert 1 / found.parameters[0, P.ETA] == pytest.approx(8.124, abs=0.02)
         assert found.parameters[0, P.LAMBDA] == pytest.approx(0.1278, abs=0.001)  # of losses
+
+
+# Standard errors from the Hessian of the DEM/GBP benchmark: TSP file bgfcp, mu, omega, alpha, beta.
+def test_the_uncertainty_of_the_next_mean_is_the_benchmarks_hessian_standard_error():
+    x = dem2gbp()
+    found = garch.roll(
+        np.ascontiguousarray(x[None, :]), np.zeros(1, np.int64), np.ones(1, bool),
+        garch.member(P.CONSTANT_MEAN, P.MEAN_SQUARE), uncertain=True,
+    )  # fmt: skip
+    assert np.sqrt(found.uncertainty[0, 0]) == pytest.approx(0.00846212, rel=1e-4)
+
+
+def test_the_uncertainty_of_the_next_sigma_is_what_simulated_fits_show():
+    """Oracle: across samples of a known Gaussian process, sigma's error at the true path has this variance."""
+    from tests.reference.datasets import garch_t
+
+    ratios = []
+    for seed in range(60):
+        losses, sigma = garch_t(1001, seed, nu=60.0)
+        found = fit_uncertain(losses[:1000])
+        ratios.append((found.sigma[0] - sigma[1000]) ** 2 / found.uncertainty[0, 1])
+    assert 0.5 < np.median(ratios) / 0.4549 < 2.0  # 0.4549: median of a chi-square with one degree of freedom
+
+
+def fit_uncertain(x: np.ndarray) -> garch.Rolled:
+    member = garch.member(P.CONSTANT_MEAN, P.SAMPLE_VARIANCE)
+    return garch.roll(np.ascontiguousarray(x[None, :]), np.zeros(1, np.int64), np.ones(1, bool), member, uncertain=True)

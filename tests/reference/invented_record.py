@@ -98,7 +98,22 @@ def _forecast(own: pd.DataFrame, desk: str, model: str, size: float, level: floa
     if model == "conditional-evt":
         status[5:8] = "fallback: last good parameters"
     origin = own["date"].to_numpy() - np.timedelta64(1, "D")
-    columns = dict.fromkeys(("mean", "sigma", "shape", "scale", "threshold", "pit_hypothetical", "pit_actual"), np.nan)
+    columns = dict.fromkeys(
+        (
+            "var_low",
+            "var_high",
+            "es_low",
+            "es_high",
+            "mean",
+            "sigma",
+            "shape",
+            "scale",
+            "threshold",
+            "pit_hypothetical",
+            "pit_actual",
+        ),
+        np.nan,
+    )
     made = {"origin": origin, "desk": desk, "model": model, "level": level, "horizon": 1, "var": var, "es": 1.25 * var}
     return pd.DataFrame({"date": own["date"].to_numpy(), **made, **columns, "status": status})
 
