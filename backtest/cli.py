@@ -29,7 +29,9 @@ app = typer.Typer(
 
 StudyPath = Annotated[Path, typer.Argument(help="The study file (TOML).", show_default=False)]
 RunPath = Annotated[Path, typer.Argument(help="A run folder.", show_default=False)]
-OutPath = Annotated[Path | None, typer.Option("--out", help="The run folder [default: <study>-run beside the study].")]
+OutPath = Annotated[
+    str | None, typer.Option("--out", metavar="PATH", help="The run folder [default: <study>-run beside the study].")
+]
 Workers = Annotated[int | None, typer.Option("--workers", min=1, help="Threads [default: the machine's cores].")]
 
 
@@ -62,7 +64,7 @@ class _Shown:
             self._console.print(f"{what}: {done} of {total}" if total > 1 else what, highlight=False)
 
 
-def _run(study_path: Path, out: Path | None, workers: int | None, replace: bool) -> None:
+def _run(study_path: Path, out: str | Path | None, workers: int | None, replace: bool) -> None:
     study = read_study(study_path)
     with _Shown(Console(stderr=True)) as progress:
         outcome = pipeline.run(study, out, workers=workers, progress=progress, replace=replace)
@@ -71,6 +73,8 @@ def _run(study_path: Path, out: Path | None, workers: int | None, replace: bool)
     typer.echo(
         "Statistical evidence, not approval or advice; the applicable rules, supervisor and licensed judgement decide."
     )
+    if outcome.taken is not None:
+        typer.echo(f"{outcome.taken} exists, so the run is in {outcome.folder}: nothing is overwritten.", err=True)
     typer.echo(f"Summary: {outcome.folder / pipeline.SUMMARY}")
     if outcome.too_many_fallbacks:
         allowed = study.forecast.fallback_share

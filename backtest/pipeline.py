@@ -27,7 +27,7 @@ from backtest.reading.draft import draft_study
 from backtest.reading.inputs import read_inputs
 from backtest.reading.remarks import in_order
 from backtest.recording.manifest import make_manifest
-from backtest.recording.run_folder import read_record, replace_folder, write_document, write_record
+from backtest.recording.run_folder import check_place, read_record, replace_folder, write_document, write_record
 from backtest.records import (
     DATE_DTYPE,
     FORECAST_COLUMNS,
@@ -45,19 +45,24 @@ from backtest.reporting.lines import input_lines
 from backtest.reporting.sentences import six_sentences
 from backtest.reporting.show import day_view
 from backtest.study import Study
-from backtest.verbs import Progress, each, forecast_desks, silent
+from backtest.values import whole
+from backtest.verbs import Progress, each, forecast_desks, refuse_reserved, silent
 
 SUMMARY = "summary.html"
 
 
 @dataclass(frozen=True)
 class Outcome:
-    """What a run leaves: its folder, the six sentences, and whether more forecasts fell back than the study allows."""
+    """What a run leaves: its folder, the six sentences, and whether more forecasts fell back than the study allows.
+
+    ``taken`` is the folder asked for where that was there already, so that the run is in another one.
+    """
 
     folder: Path
     sentences: tuple[str, ...]
     fallback_share: float
     too_many_fallbacks: bool
+    taken: Path | None = None
 
 
 @dataclass(frozen=True)
@@ -75,6 +80,7 @@ def _resolve(study: Study) -> _Resolved:
     pairs = [m.model_dump(exclude_none=True) for m in plan.model]
     taken = [review.subject] if review.subject else []
     models = resolve_all([*plan.models, *pairs], taken=taken, every_start=plan.every_start, **settings)
+    refuse_reserved(models, review.subject)
     check_past(models, plan.learn_from)
     resolve_rules(review.rules)
     resolve_windows(plan.levels)
@@ -136,18 +142,18 @@ def run(
     """
     started, report = dt.datetime.now(dt.UTC), progress or silent
     resolved = _resolve(study)
+    wanted = check_place(study.folder / f"{study.path.stem}-run" if out is None else out)
     report("reading", 0, 1)
     inputs, histories = _inputs(study, resolved)
-    cores = workers or joblib.cpu_count()
+    cores = joblib.cpu_count() if workers is None else whole(workers, "workers", least=1)
     asked = ask(study.forecast.bands, study.forecast.horizons, seed=study.seed)
     forecasts, fits = forecast_desks(histories, resolved.models, study.forecast.levels, cores, report, asked)
     bridge = _bridge_steps(study, inputs, histories, forecasts, resolved, cores, report)
     record = _judged(study, inputs, resolved, forecasts, fits, bridge, started, report)
-    wanted = Path(out) if out is not None else study.folder / f"{study.path.stem}-run"
     folder = replace_folder(record, wanted) if replace else write_record(record, wanted)
     report("writing the summary", 0, 1)
     write_document(folder, SUMMARY, summary_html(record))
-    return _outcome(record, folder, study.forecast.fallback_share)
+    return _outcome(record, folder, study.forecast.fallback_share, None if folder == wanted else wanted)
 
 
 def render(folder: str | Path) -> Path:
@@ -161,10 +167,10 @@ def show(folder: str | Path, desk: str, date: str) -> list[str]:
     return day_view(read_record(Path(folder)), desk, date)
 
 
-def _outcome(record: Record, folder: Path, allowed: float) -> Outcome:
+def _outcome(record: Record, folder: Path, allowed: float, taken: Path | None) -> Outcome:
     counted: Any = record.manifest["fallbacks"]
     share = counted["fallbacks"] / counted["forecasts"] if counted["forecasts"] else 0.0
-    return Outcome(folder, tuple(six_sentences(record)), share, share > allowed)
+    return Outcome(folder, tuple(six_sentences(record)), share, share > allowed, taken)
 
 
 def _reported_rows(inputs: Inputs) -> pd.DataFrame:

@@ -34,6 +34,8 @@ REMARK_COLUMNS = ("rule", "source", "desk", "first", "last", "count", "text")
 
 REPORTED_STATUS = "as reported"
 """Status of rows that the institution forecast; every other row of a forecasts table is ours."""
+FOR_THE_BRIDGE, AGAIN = " (bridge)", " re-performed"
+"""How the names end of models that a run makes itself, to explain the reported one."""
 FALLBACK = "fallback"
 """A status part that begins with this word marks a forecast made by a stated fallback."""
 

@@ -15,6 +15,8 @@ from backtest.errors import StudyError, near_miss
 
 
 def _inside(path: str) -> str:
+    if "\0" in path:
+        raise ValueError("a path holds no NUL character")
     pure = PurePosixPath(path.replace("\\", "/"))
     if pure.is_absolute() or ".." in pure.parts or ":" in path:
         raise ValueError("paths are relative to the study file and stay inside its folder")
@@ -27,6 +29,13 @@ def _one_character(text: str) -> str:
     return text
 
 
+def _each_once(items: tuple[Any, ...]) -> tuple[Any, ...]:
+    if len(set(items)) < len(items):
+        raise ValueError(f"a value stands twice in {list(items)}")
+    return items
+
+
+Span = Annotated[int, Field(ge=20)] | Literal["all"]
 Level = Annotated[float, Field(gt=0.5, lt=1.0)]
 FilePath = Annotated[str, AfterValidator(_inside), Field(min_length=1)]
 Character = Annotated[str, AfterValidator(_one_character)]
@@ -57,7 +66,7 @@ class Review(_Form):
     subject: str | None = None
     firm: str | None = None
     as_of: dt.date | None = None
-    days: tuple[Annotated[int, Field(ge=20)] | Literal["all"], ...] = (250, "all")
+    days: Annotated[tuple[Span, ...], AfterValidator(_each_once)] = (250, "all")
     rules: str | None = None
     method: tuple[Method, ...] = ()
 
@@ -157,11 +166,16 @@ class ModelSettings(_Form):
 
 
 class Forecast(_Form):
-    """Which challengers are run, on which past: P&L as it came, or (vectors) each day's positions under past moves."""
+    """Which challengers are run, on which past: P&L as it came, or (vectors) each day's positions under past moves.
+
+    ``recalibrate_days``: the days on which parameters are estimated anew lie on a fixed grid, so that a later cut-off
+    moves none of them: weekdays are counted from a fixed date, every so manieth recalibrates, and so does the first of
+    each block of 256.
+    """
 
     window: int = Field(default=1000, ge=50)
     recalibrate_days: int = Field(default=1, ge=1)
-    levels: tuple[Level, ...] = Field(default=(0.975, 0.99), min_length=1)
+    levels: Annotated[tuple[Level, ...], AfterValidator(_each_once)] = Field(default=(0.975, 0.99), min_length=1)
     learn_from: Literal["hypothetical", "actual", "vectors"] = "hypothetical"
     fallback_share: float = Field(default=0.01, ge=0, le=1)
     horizons: tuple[Annotated[int, Field(ge=1, le=250)], ...] = (1,)
@@ -202,12 +216,20 @@ def read_study(path: str | Path) -> Study:
     Returns the frozen Study. Raises StudyError (file, key, value, remedy) where the file cannot be read, is no TOML,
     has an unknown key, a value out of range or a path outside its folder.
     """
+    if not isinstance(path, str | Path) or "\0" in str(path):
+        remedy = "Hand over the path of a TOML file as text or pathlib.Path."
+        raise StudyError("this is no path of a study file", value=repr(path), remedy=remedy)
     path = Path(path)
     try:
-        table = tomllib.loads(path.read_bytes().decode("utf-8"))
+        table = tomllib.loads(path.read_bytes().decode("utf-8-sig"))
     except OSError as error:
-        raise StudyError("the study file cannot be read", value=error.strerror, place=str(path)) from None
-    except (UnicodeDecodeError, tomllib.TOMLDecodeError) as error:
+        remedy = _studies_beside(path) if isinstance(error, FileNotFoundError) else ""
+        raise StudyError(
+            "the study file cannot be read", value=error.strerror, place=str(path), remedy=remedy
+        ) from None
+    except RecursionError:
+        raise StudyError("the study file is nested too deeply", place=str(path), remedy="Write it flat.") from None
+    except ValueError as error:  # not UTF-8, not TOML, or a number too long to be read
         raise StudyError(f"the study file is not valid TOML: {error}", place=str(path)) from None
     if "path" in table:
         raise StudyError("unknown key 'path'", place=str(path), remedy=near_miss("path", _known_keys(())))
@@ -217,6 +239,13 @@ def read_study(path: str | Path) -> Study:
         raise _explain(error, path) from None
 
 
+def _studies_beside(path: Path) -> str:
+    found = [other.name for other in path.parent.glob("*.toml")] if path.parent.is_dir() else []
+    return near_miss(path.name, found) if found else f"There is no TOML file in {str(path.parent)!r}."
+
+
+_PLAIN = {"tuple_type": "a list is needed", "model_type": "a table is needed", "dict_type": "a table is needed"}
+"""Words for what pydantic says in terms of Python, by its type of error."""
 _UNION_NAMES = {"str", "constrained-int", "literal['default']", "literal['all']"}
 """Parts of pydantic's address of an error that name a branch of a union, not a key of the file."""
 
@@ -233,7 +262,7 @@ def _explain(error: ValidationError, path: Path) -> StudyError:
         )
     if first["type"] == "missing":
         return StudyError(f"required key {key!r} is missing", place=str(path), remedy="Add it to the study file.")
-    message = first["msg"].removeprefix("Value error, ")
+    message = _PLAIN.get(first["type"], first["msg"].removeprefix("Value error, "))
     value = None if isinstance(first["input"], dict | tuple | list) else first["input"]
     remedy = "A level is a confidence such as 0.99, never 1 or 99." if "level" in key else ""
     return StudyError(f"{key or 'study'}: {message}{tail}", place=str(path), value=value, remedy=remedy)

@@ -1,4 +1,4 @@
-"""Values that a caller hands over: whole numbers, fractions, lists; what does not fit is a StudyError, never a crash."""
+"""Values that a caller hands over: whole numbers, fractions, lists; what does not fit is a StudyError."""
 
 import math
 import numbers
@@ -27,8 +27,9 @@ def whole(value: Any, place: str, *, least: int, most: int | None = LARGEST) -> 
 def fraction(value: Any, place: str, *, above: float, below: float, remedy: str = "") -> float:
     """Return a number strictly between ``above`` and ``below`` as float; raise StudyError for anything else."""
     number = math.nan
-    if isinstance(value, numbers.Real) and not isinstance(value, bool):
-        number = float(value) if -1.0 < value < 2.0 else math.nan  # an integer may be too large for a float
+    real: Any = value if isinstance(value, numbers.Real) and not isinstance(value, bool) else math.nan
+    if -1.0 < real < 2.0:  # an integer may be too large for a float
+        number = float(real)
     if not above < number < below:
         rule = f"a number between {above:g} and {below:g}, both excluded"
         raise StudyError("the value cannot be used", value=_named(value), rule=rule, place=place, remedy=remedy)
@@ -69,4 +70,4 @@ def levels_of(levels: Any) -> tuple[float, ...]:
 
 
 def _named(value: Any) -> object:
-    return "None" if value is None else f"{value} (a bool)" if type(value).__name__ in ("bool", "bool_") else value
+    return "None" if value is None else value

@@ -7,15 +7,26 @@ import joblib
 import numpy as np
 import pandas as pd
 
-from backtest.errors import StudyError
+from backtest.errors import DataError, StudyError
 from backtest.forecasting.asked import Asked, ask
 from backtest.forecasting.engine import ONE_DAY, SQRT_TIME, DeskHistory, forecast_group, groups, joined
 from backtest.forecasting.histories import check_past, desk_histories, reported_scales
 from backtest.forecasting.models import Model, resolve_all
 from backtest.judging import battery
 from backtest.kernels.compiled import is_warm
-from backtest.reading.frames import pnl_table, reported_table, vectors_table
-from backtest.records import FIT_COLUMNS, FORECAST_COLUMNS, PNL_KINDS, VECTORS, latest_known, results_table
+from backtest.reading.business_days import refuse_short_calendar
+from backtest.reading.frames import calendar_days, pnl_table, reported_table, vectors_table
+from backtest.records import (
+    AGAIN,
+    FIT_COLUMNS,
+    FOR_THE_BRIDGE,
+    FORECAST_COLUMNS,
+    PNL_KINDS,
+    VECTORS,
+    latest_known,
+    results_table,
+)
+from backtest.values import levels_of, whole
 
 Progress = Callable[[str, int, int], None]
 """Called with what is being done, how much of it is done, and of how much."""
@@ -63,22 +74,27 @@ def forecast(
     method, "none", or for the last ``bootstrap_days`` days of each desk by a residual "bootstrap" that refits filter
     and tail ``bootstraps`` times a day. ``seed``: of what is simulated. Returns the forecasts table
     (``records.FORECAST_COLUMNS``); the number of ``workers`` (threads) changes nothing in it. Raises StudyError for
-    models, levels or settings that do not exist or do not fit, DataError for a table that cannot be used.
+    models, levels or settings that do not exist or do not fit, DataError for a table that cannot be used and where no
+    desk reaches the shortest window.
     """
-    _check_levels(levels)
+    levels, workers = levels_of(levels), whole(workers, "workers", least=1)
     asked = ask(bands, horizons, seed=seed, paths=paths, bootstraps=bootstraps, bootstrap_days=bootstrap_days)
     resolved = resolve_all(
         models, levels=levels, window=window, recalibrate_days=recalibrate_days, every_start=every_start
     )
+    _refuse_no_model(resolved)
+    refuse_reserved(resolved)
     table = pnl_table(pnl)
     _check_learn_from(learn_from, table, vectors)
     check_past(resolved, learn_from)
     positions = None if vectors is None else vectors_table(vectors, table["desk"].unique())
-    days = table["date"].to_numpy() if calendar is None else np.asarray(calendar)
-    business = np.unique(days.astype("datetime64[D]"))
+    business = calendar_days(table["date"] if calendar is None else calendar)
+    refuse_short_calendar(business, table, "calendar")
     scales = reported_scales(resolved, reported_table(reported, table["desk"].unique()), None)
     histories = desk_histories(table, business, business[-1], learn_from, None, positions, scales)
     forecasts, _ = forecast_desks(histories, resolved, levels, workers, progress or silent, asked)
+    if forecasts.empty:
+        _refuse_short(histories, resolved, learn_from)
     return forecasts
 
 
@@ -99,7 +115,7 @@ def judge(
     """
     table = pnl_table(pnl)
     known = latest_known(table, table["known_on"].max())
-    options: dict[str, Any] = {"spans": tuple(days), "seed": seed}
+    options: dict[str, Any] = {"spans": days, "seed": seed}
     results = battery.judge_table(
         known, forecasts, tests=tests, significance=significance, simulations=simulations, **options
     )
@@ -152,10 +168,34 @@ def _check_learn_from(learn_from: str, pnl: pd.DataFrame, vectors: pd.DataFrame 
         raise StudyError("learn_from names no P&L of the table", value=learn_from, place="forecast")
 
 
-def _check_levels(levels: Sequence[float]) -> None:
-    for level in levels:
-        if not 0.5 < level < 1:
-            remedy = "A level is a confidence such as 0.99, never 1 or 99."
-            raise StudyError("a level must lie between 0.5 and 1", value=level, place="levels", remedy=remedy)
-    if not len(levels):
-        raise StudyError("no level is asked for", place="levels")
+def _refuse_no_model(models: Sequence[Model]) -> None:
+    if not models:
+        raise StudyError("no model is asked for", place="models", remedy="Name at least one, such as 'historical'.")
+
+
+def _refuse_short(histories: Sequence[DeskHistory], models: Sequence[Model], learn_from: str) -> None:
+    """Say that no desk has a past as long as the shortest window."""
+    shortest = min(model.window for model in models)
+    known = {history.desk: int(history.known["loss"].notna().groupby(history.known["date"]).any().sum())
+             for history in histories}  # fmt: skip
+    longest = max(known, key=lambda desk: known[desk])
+    of_vectors = learn_from == VECTORS
+    raise DataError(
+        f"no {'P&L vector' if of_vectors else 'desk'} reaches the window of {shortest} days: there is no forecast",
+        rule="a target day needs a full window of known losses before it",
+        value=None if of_vectors else f"at most {known[longest]} days with P&L, desk {longest!r}",
+        place="vectors" if of_vectors else "pnl",
+        remedy="Shorten the window, or hand over more history.",
+    )
+
+
+def refuse_reserved(models: Sequence[Model], subject: str | None = None) -> None:
+    """Refuse a model whose name is kept for what a run makes itself: by root of time, for the bridge, re-performed."""
+    for model in models:
+        ours = model.name.endswith((f" {SQRT_TIME}", FOR_THE_BRIDGE))
+        if ours or (subject is not None and model.name == f"{subject}{AGAIN}"):
+            raise StudyError(
+                "a model bears a name that is kept for what a run makes itself", value=model.name,
+                place="forecast.model", rule=f"kept: '... {SQRT_TIME}', '...{FOR_THE_BRIDGE}', '<subject>{AGAIN}'",
+                remedy="Give it another name.",
+            )  # fmt: skip

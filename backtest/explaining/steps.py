@@ -11,6 +11,7 @@ from backtest.errors import StudyError
 from backtest.forecasting.engine import DeskHistory, forecast_group, groups
 from backtest.forecasting.models import REPORTED, Model, resolve
 from backtest.judging.bridge import FEWEST_SHARED_DAYS, STEPS, Step
+from backtest.records import AGAIN, FOR_THE_BRIDGE
 
 WINDOWS = (1000, 750, 500)
 """Windows the bridge tries, the longest first; it takes the first that leaves enough shared days."""
@@ -69,8 +70,8 @@ def desk_steps(
             return DeskSteps(history.desk, (), made.iloc[:0])
         first.append(Step(STEPS[0], subject, methods[-1].model.window if methods else None, reported))
         if methods:
-            again = perform_again(history, methods, levels).assign(model=f"{subject} re-performed")
-            first.append(Step(STEPS[1], f"{subject} re-performed", methods[-1].model.window, again))
+            again = perform_again(history, methods, levels).assign(model=f"{subject}{AGAIN}")
+            first.append(Step(STEPS[1], f"{subject}{AGAIN}", methods[-1].model.window, again))
             extra.append(again)
     window = choose_window(history, [step.forecasts for step in first])
     if window is None:
@@ -129,7 +130,7 @@ def _challengers(
 def _label(model: Model, ready: Sequence[Model]) -> str:
     """Return the name of a challenger made for the bridge alone: never that of a model of the study."""
     label = f"{model.name} {model.window}"
-    return f"{label} (bridge)" if label in {m.name for m in ready} else label
+    return f"{label}{FOR_THE_BRIDGE}" if label in {m.name for m in ready} else label
 
 
 def _same(one: Model, other: Model) -> bool:

@@ -14,6 +14,7 @@ from backtest.judging.answers import Answer, Declared, PairTest, RuleTest, Rulin
 from backtest.judging.samples import Days, Desk, Sample, Span, check_spans, read_book
 from backtest.judging.zones import resolve_rules
 from backtest.records import Result
+from backtest.values import fraction, listed, whole
 
 FAMILIES: tuple[tuple[Declared, ...], ...] = (
     coverage.TESTS,
@@ -31,9 +32,11 @@ BENCHMARK = "historical"
 
 def resolve(tests: str | Sequence[str]) -> tuple[str, ...]:
     """Return the keys asked for, each once, in the order given; raises StudyError with the near miss."""
-    keys = DEFAULT if tests == "default" else (tests,) if isinstance(tests, str) else tuple(tests)
+    if isinstance(tests, str):
+        tests = DEFAULT if tests == "default" else (tests,)
+    keys = listed(tests, "judge.tests", '["binomial", "kupiec"]')
     for key in keys:
-        if key not in TESTS:
+        if not isinstance(key, str) or key not in TESTS:
             raise StudyError("unknown test", value=key, place="judge.tests", remedy=near_miss(key, TESTS))
     return tuple(dict.fromkeys(keys))
 
@@ -62,7 +65,11 @@ def judge_table(
     Raises StudyError for unknown tests, rules or spans, DataError for tables that cannot be used.
     """
     keys, profile, spans = resolve(tests), resolve_rules(rules), check_spans(spans)
-    settings = Settings(significance, simulations, seed)
+    settings = Settings(
+        fraction(significance, "significance", above=0.0, below=0.5),
+        whole(simulations, "simulations", least=99),
+        whole(seed, "seed", least=0, most=None),
+    )
     book = read_book(pnl, forecasts, calendar=calendar, as_of=as_of)
     early = None if first_known is None else read_book(first_known, forecasts, calendar=calendar, as_of=book.as_of)
     chosen = [TESTS[key] for key in keys]

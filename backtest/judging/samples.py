@@ -14,6 +14,7 @@ import pandas as pd
 
 from backtest.errors import DataError, StudyError, near_miss
 from backtest.records import PNL_KINDS
+from backtest.values import listed, once, whole
 
 Floats = npt.NDArray[np.float64]
 Days = npt.NDArray[np.datetime64]
@@ -184,6 +185,8 @@ def _checked_forecasts(forecasts: pd.DataFrame) -> pd.DataFrame:
 
 
 def _require(table: pd.DataFrame, columns: tuple[str, ...], place: str) -> None:
+    if not isinstance(table, pd.DataFrame):
+        raise DataError("not a table", value=type(table).__name__, place=place, remedy="Hand over a pandas DataFrame.")
     for column in columns:
         if column not in table:
             raise DataError(
@@ -208,7 +211,9 @@ def _once(table: pd.DataFrame, key: list[str], place: str) -> None:
 
 def _numbers(table: pd.DataFrame, columns: list[str], place: str) -> pd.DataFrame:
     for column in columns:
-        if not pd.api.types.is_numeric_dtype(table[column]):
+        kinds = pd.api.types
+        others = kinds.is_bool_dtype(table[column]) or kinds.is_complex_dtype(table[column])
+        if others or not kinds.is_numeric_dtype(table[column]):
             raise DataError(f"column {column!r} does not hold numbers", value=str(table[column].dtype), place=place,
                             remedy="Convert it with pandas.to_numeric.")  # fmt: skip
         endless = table[np.isinf(table[column].to_numpy(dtype=np.float64))]
@@ -219,9 +224,12 @@ def _numbers(table: pd.DataFrame, columns: list[str], place: str) -> pd.DataFram
 
 
 def check_spans(spans: Sequence[Span]) -> tuple[Span, ...]:
-    """Return the spans as a tuple; raises StudyError for anything but positive numbers of days and "all"."""
-    for span in spans:
-        if span != "all" and (isinstance(span, bool) or not isinstance(span, int) or span < 1):
+    """Return the spans as a tuple; raises StudyError for anything but positive numbers of days and "all", each once."""
+    found: list[Span] = []
+    for span in listed(spans, "days", '[250, "all"]'):
+        if isinstance(span, str) and span != "all":
             raise StudyError("not a span", value=span, rule='a number of business days, or "all"', place="days",
                              remedy='Write for example [250, "all"].')  # fmt: skip
-    return tuple(spans)
+        found.append("all" if isinstance(span, str) else whole(span, "days", least=1))
+    once(found, "days")
+    return tuple(found)

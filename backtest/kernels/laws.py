@@ -38,7 +38,7 @@ def skew_shape(eta: float, lam: float) -> tuple[float, float]:
 
 @inner
 def set_constants(out: np.ndarray, row: int, lane: int, eta: float, lam: float, skew: bool) -> None:
-    """Fill column ``lane`` of ``out`` (rows, lanes), from ``row`` on, with the constants of the law at eta and lambda."""
+    """Fill column ``lane`` of ``out`` (rows, lanes), from ``row`` on, with the law's constants at eta and lambda."""
     spare = 1.0 / (1.0 - 2.0 * eta)
     out[row + KAPPA, lane], out[row + KAPPA + 1, lane], out[row + KAPPA + 2, lane] = (
         eta * spare,

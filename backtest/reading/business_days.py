@@ -60,7 +60,7 @@ def refuse_short_calendar(days: np.ndarray, pnl: pd.DataFrame, name: str) -> Non
             rule="a supplied calendar covers the P&L up to the cut-off",
             value=f"{days[0]} to {days[-1]}",
             place=name,
-            remedy="Extend the calendar, or take data.calendar out: then the union of the data's days is used.",
+            remedy="Extend the calendar, or leave it out (data.calendar): then the union of the data's days is used.",
         )
 
 

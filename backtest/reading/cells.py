@@ -14,6 +14,8 @@ from backtest.errors import DataError, near_miss
 from backtest.reading.tables import Table
 from backtest.records import DATE_DTYPE
 
+LARGEST_AMOUNT = 1e150
+"""Beyond it a number is no amount of money, and its square no number."""
 _NUMBER = r"^[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?$"
 _EPOCH = dt.datetime(1970, 1, 1)
 
@@ -33,6 +35,9 @@ def numbers(table: Table, column: str) -> np.ndarray:
     if infinite.any():
         row = int(infinite.argmax())
         refuse(table, row, column, "an infinite value", rule="values are finite", remedy="Correct or empty the cell.")
+    rule = f"values lie between -{LARGEST_AMOUNT:g} and {LARGEST_AMOUNT:g}"
+    far = np.abs(values) > LARGEST_AMOUNT
+    refuse_first(table, far, column, "not an amount of money", rule=rule, remedy="Correct or empty the cell.")
     return values
 
 

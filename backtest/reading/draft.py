@@ -73,7 +73,7 @@ def _mapped(by_role: dict[str, Extract]) -> dict[str, list[Line]]:
     others = map_reported(reported) if reported else []
     if pnl is reported and reported is not None:
         columns, others = merged(columns, others), []
-    layout = next((e.layout for e in by_role.values() if e.layout), {})
+    layout = _layout(by_role)
     roles = ("pnl", "reported", *SIDE_ROLES, *(role for role in POSITION_ROLES if role in by_role))
     data = [_file(role, by_role.get(role)) for role in roles]
     return {
@@ -81,6 +81,23 @@ def _mapped(by_role: dict[str, Extract]) -> dict[str, list[Line]]:
         "data.columns": columns,
         "data.reported_columns": others,
     }
+
+
+def _layout(by_role: dict[str, Extract]) -> dict[str, Finding]:
+    """Return how the files are written, key by key from the first that tells: P&L, forecasts, then the others."""
+    ordered = sorted(by_role, key=lambda role: ("pnl", "reported", role).index(role))
+    layout: dict[str, Finding] = {}
+    for extract in (by_role[role] for role in ordered):
+        for key, finding in extract.layout.items():
+            if key in _told(extract) and (key not in layout or (finding.sure and not layout[key].sure)):
+                layout[key] = finding
+    return layout
+
+
+def _told(extract: Extract) -> list[str]:
+    """Return the keys of the layout that a file can tell of: one column alone shows no separator and no decimal."""
+    alone = len(extract.table.columns) == 1
+    return [key for key in extract.layout if not (alone and key in ("separator", "decimal"))]
 
 
 def _file(role: str, extract: Extract | None) -> Line:
@@ -167,7 +184,10 @@ def _notes(
     lines = [*sections["data.columns"], *sections["data.reported_columns"]]
     layouts = [extract for extract in extracts if extract.layout]
     for extract in extracts:
-        if id(extract) not in used:
+        if id(extract) not in used and extract.column_a_desk:
+            what = "one column a desk is not read: melt it to date, desk, value (one row a date x desk)"
+            notes.append(f"{extract.table.name}: {what}")
+        elif id(extract) not in used:
             notes.append(f"{extract.table.name} has no role here: not recognised, or another file has it")
         elif extract.role not in (*SIDE_ROLES, *POSITION_ROLES) and (left := rest(extract, lines)):
             notes.append(f"{extract.table.name}: columns not mapped: {', '.join(left)}")
@@ -177,7 +197,7 @@ def _notes(
 
 def _difference(one: Extract, other: Extract) -> str:
     """Say where two files are written differently: a study declares one layout for all."""
-    keys = [key for key in one.layout if one.layout[key].sure and other.layout[key].sure]
+    keys = [key for key in _told(one) if key in _told(other) and one.layout[key].sure and other.layout[key].sure]
     found = [key for key in keys if one.layout[key].value != other.layout[key].value]
     if not found:
         return ""

@@ -18,6 +18,7 @@ from backtest.reading.vectors import VECTOR_COLUMNS
 
 POSITION_ROLES = {"vectors": VECTOR_COLUMNS, "factors": FACTOR_COLUMNS, "exposures": EXPOSURE_COLUMNS}
 """Tables of positions under past moves, known by columns of exactly these names."""
+_NO_DATE = Finding("", "no column holds days", False)
 SAMPLE = 4000
 """Distinct cells of a column that are looked at, evenly spread over those it has."""
 
@@ -48,6 +49,13 @@ class Extract:
         if "desk" in header and {"parent", "valid_from", "valid_to", "scope"} & header:
             return "desks"
         return "calendar" if list(self.keys) == ["date"] and len(header) == 1 else ""
+
+    @property
+    def column_a_desk(self) -> bool:
+        """Whether the file looks like dates with one column of numbers a desk: a form that is not read."""
+        others = [column for column in self.table.columns if column != str(self.keys.get("date", _NO_DATE).value)]
+        unnamed = "date" in self.keys and not {"desk"} & set(self.keys) and not self.role
+        return unnamed and len(others) > 1 and all(is_number(self.table, column) for column in others)
 
 
 def look_at(path: Path, folder: Path) -> Extract:

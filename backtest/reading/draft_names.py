@@ -22,6 +22,13 @@ PNL_WORDS = {
     "risk_theoretical_aligned": ("risk_theoretical_aligned", "rtpl_aligned", "aligned_rtpl", "theoretical_aligned"),
 }
 _PNL_MARKS = ("profit_and_loss", "profit_loss", "pnl", "p_l", "pl", "loss", "losses")
+_RUN_TOGETHER = {
+    kind: {
+        "".join(pair).replace("_", "") for word in words for mark in _PNL_MARKS for pair in ((word, mark), (mark, word))
+    }
+    for kind, words in PNL_WORDS.items()
+}
+"""Names such as HypPnL or pnlactual, in which nothing parts the words."""
 _MEASURES = {"var": "var", "es": "es", "cvar": "es", "etl": "es", "expected_shortfall": "es", "shortfall": "es"}
 _MEASURE = re.compile(r"(?:^|_)(" + "|".join(sorted(_MEASURES, key=len, reverse=True)) + r")(?=_|\d|$)")
 _HORIZON = re.compile(r"(?:^|_)(\d+)_?(?:d|day|days)(?=_|$)")
@@ -56,7 +63,7 @@ def pnl_kind(name: str) -> str | None:
         shorter = re.sub(rf"(?:^|_){mark}(?=_|$)", "", bare).strip("_")
         marked, bare = marked or shorter != bare, shorter
     for kind, words in PNL_WORDS.items():
-        if text in words or bare in words:
+        if text in words or bare in words or text.replace("_", "") in _RUN_TOGETHER[kind]:
             return kind
     return "any" if marked and not bare else None
 
@@ -64,7 +71,7 @@ def pnl_kind(name: str) -> str | None:
 def says_loss(name: str) -> bool:
     """Say whether a P&L column's name speaks of losses alone."""
     text = plain(name)
-    return bool(re.search(r"(?:^|_)(loss|losses)(?=_|$)", text)) and "profit" not in text
+    return bool(re.search(r"loss(es)?(?=_|$)", text)) and "profit" not in text
 
 
 def risk_column(name: str) -> RiskColumn | None:

@@ -72,6 +72,16 @@ def known_before_last(pnl: pd.DataFrame, kind: str, calendar: np.ndarray) -> pd.
     return counts
 
 
+def rules_not_applied(study: Study) -> list[Remark]:
+    """Remark that a rule profile is named and nothing it could be applied to: it asks for the subject and the firm."""
+    review = study.review
+    missing = [f"review.{key}" for key in ("subject", "firm") if getattr(review, key) is None]
+    if review.rules is None or not missing:
+        return []
+    text = f"the rules {review.rules!r} are not applied: {' and '.join(missing)} not named (model and row of the firm)"
+    return [Remark("rules-not-applied", study.path.name, "", "", "", 1, text)]
+
+
 def short_histories(study: Study, pnl: pd.DataFrame, reported: pd.DataFrame, calendar: np.ndarray) -> list[Remark]:
     """Remark, per desk, on each window not reached and on less than a year of days, as "n of 250"."""
     learn_from, judged = study.forecast.learn_from, set(reported["desk"].unique())

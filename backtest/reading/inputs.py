@@ -27,7 +27,7 @@ from backtest.reading.desks import (
     remark_desks,
 )
 from backtest.reading.exposures import EXPOSURE_COLUMNS, FACTOR_COLUMNS, build_vectors, read_factors
-from backtest.reading.history import refuse_nothing_to_do, short_histories
+from backtest.reading.history import refuse_nothing_to_do, rules_not_applied, short_histories
 from backtest.reading.pnl import read_pnl
 from backtest.reading.remarks import in_order, per_desk
 from backtest.reading.reported import COLUMNS, empty_reported, read_reported, to_target_dates
@@ -94,7 +94,7 @@ def read_inputs(study: Study) -> Inputs:
     inputs = _assemble(gathered, as_of, calendar, pnl, reported, desks, changes)
     inputs = dataclasses.replace(inputs, vectors=vectors)
     refuse_nothing_to_do(study, inputs.pnl, inputs.reported, calendar, vectors)
-    remarks = [*gathered.remarks, *_unnamed(gathered), *_look(gathered, inputs, supplied)]
+    remarks = [*gathered.remarks, *rules_not_applied(study), *_unnamed(gathered), *_look(gathered, inputs, supplied)]
     return dataclasses.replace(inputs, remarks=in_order(remarks))
 
 

@@ -36,6 +36,27 @@ TABLES = {
 _RUN_AGAIN = "Restore the file from a copy, or run the study again."
 
 
+def check_place(wanted: str | Path) -> Path:
+    """Return the folder asked for as a path, after a trial that something can be made there; leaves nothing.
+
+    Raises RecordError for an empty path, one with a NUL character, and where the place cannot be written.
+    """
+    remedy = "Choose another place with --out (in Python: out=)."
+    if not isinstance(wanted, str | Path) or not str(wanted).strip() or "\0" in str(wanted):
+        raise RecordError("this is no path of a run folder", value=repr(wanted), remedy=remedy)
+    place = Path(wanted)
+    place = place if place.name not in ("", "..") else place.resolve()
+    nearest = next((folder for folder in place.parents if os.path.lexists(folder)), place.parent)
+    trial = _sibling(nearest / place.name)
+    try:
+        trial.mkdir()
+        trial.rmdir()
+    except OSError as error:
+        what = "the run folder cannot be written"
+        raise RecordError(what, value=error.strerror, place=str(place), remedy=remedy) from None
+    return place
+
+
 def write_record(record: Record, wanted: Path) -> Path:
     """Write a run folder at ``wanted``, or at ``wanted-2``, ``wanted-3`` ... where that is taken; return the folder.
 

@@ -3,14 +3,15 @@
 import numpy as np
 import pandas as pd
 
+from backtest.reporting import wording as say
 from backtest.reporting.book import BY_RULE, Book, Row, Span, given, text
 from backtest.reporting.facts import (
     ZONES,
     Bridge,
     Count,
     Often,
-    Person,
     Power,
+    Rejection,
     RuleCount,
     Scope,
     Size,
@@ -18,6 +19,8 @@ from backtest.reporting.facts import (
     Sufficient,
     When,
 )
+
+HYPOTHETICAL_ONLY = "count on hypothetical only; the rule takes the larger"
 
 
 def scope_of(book: Book) -> Scope | None:
@@ -68,7 +71,29 @@ def often(book: Book, scope: Scope) -> Often:
         counts = [_count(book, scope, scope.model, kind, kind) for kind in book.kinds(scope.desk, scope.model)]
     else:
         counts = [_count(book, scope, model, scope.kind, model) for model in book.models]
-    return Often(scope, tuple(c for c in counts if c), rule_count(book, scope))
+    return Often(scope, tuple(c for c in counts if c), rule_count(book, scope), _more_counts(book, scope))
+
+
+def rejections(book: Book, scope: Scope, question: str) -> tuple[Rejection, ...]:
+    """Draw every rejection to a question over the main span, whatever its level and P&L kind, in recorded order."""
+    rows = book.results(scope.desk, scope.model, question=question, place=scope.span.place, decision="rejected")
+    return tuple(
+        Rejection(str(r["test"]), float(r["level"]), str(r["pnl_kind"]), float(r["p_value"]), text(r["phrase"]))
+        for r in rows
+    )
+
+
+def _more_counts(book: Book, scope: Scope) -> tuple[Rejection, ...]:
+    """Draw the rejections of counts that the counts at the count level do not show; a second test adds only news."""
+    found = rejections(book, scope, "how often")
+    exact = {(r.level, r.kind) for r in found if r.test == "binomial"}
+
+    def is_news(r: Rejection) -> bool:
+        if r.test == "binomial":
+            return not scope.is_subject or r.level != scope.count_level
+        return (r.level, r.kind) not in exact
+
+    return tuple(r for r in found if is_news(r))
 
 
 def _count(book: Book, scope: Scope, model: str, kind: str, name: str) -> Count | None:
@@ -80,15 +105,34 @@ def _count(book: Book, scope: Scope, model: str, kind: str, name: str) -> Count 
 
 
 def rule_count(book: Book, scope: Scope) -> RuleCount | None:
-    """Draw the rule's count of the reported firm-wide model; None where no rule was asked or it does not apply."""
+    """Draw the rule's count of the reported firm-wide model, or why it has none; None where no rule was named."""
     rows = book.results(scope.desk, scope.model, question=BY_RULE) if scope.is_subject else []
     if not rows:
-        return None
+        named = text(book.setting("review.rules"))
+        return RuleCount(named, None, "", None, _not_applied(book, scope)) if named else None
     row = rows[-1]
     count, zone = given(row["statistic"]), next((w for w in (row["decision"], row["direction"]) if w in ZONES), "")
     name = text(book.setting("review.rules")) or text(row["test"])
-    note = "" if zone else text(row["phrase"]) or text(row["note"]) or "not tested"
+    note = _no_multiplier(row) if zone else text(row["phrase"]) or text(row["note"]) or "not tested"
     return RuleCount(name, None if count is None else int(count), zone, given(row["estimate"]), note)
+
+
+def _not_applied(book: Book, scope: Scope) -> str:
+    firm = text(book.setting("review.firm"))
+    if not scope.is_subject:
+        return "not applied, since no reported model was supplied"
+    if not firm:
+        return "not applied, since no desk is named as the firm-wide row"
+    if scope.desk != firm:
+        return f"not applied, since it counts the firm-wide row {say.name(firm)} alone"
+    return "not applied: the record holds no count by rule"
+
+
+def _no_multiplier(row: Row) -> str:
+    """Say why a rule that gives a zone gives no multiplier; empty where it gives one or the record does not say."""
+    if given(row["estimate"]) is not None:
+        return ""
+    return HYPOTHETICAL_ONLY if HYPOTHETICAL_ONLY in text(row["note"]) else ""
 
 
 def when(book: Book, scope: Scope) -> When:
@@ -97,18 +141,27 @@ def when(book: Book, scope: Scope) -> When:
     daily = _within(book.daily(scope.desk, scope.model, scope.size_level, scope.kind), scope.span)
     hits = daily.loc[daily["loss"] > daily["var"], "date"].to_numpy().astype("datetime64[D]")
     inside, first, last = _densest(np.searchsorted(book.business_days, hits))
+    days = int(daily["loss"].notna().sum())
     return When(
         scope=scope,
         exceptions=len(hits),
-        days=int(daily["loss"].notna().sum()),
+        days=days,
         inside=inside,
         width=int(last - first + 1) if inside else 0,
+        even=(inside - 1) * days / len(hits) + 1 if inside else 0.0,
         first=str(book.business_days[first]) if inside else "",
         last=str(book.business_days[last]) if inside else "",
         p=given(row["p_value"]) if row else None,
         rejected=row is not None and row["decision"] == "rejected",
         note=text(row["phrase"]) if row else "not tested: the test was not asked for",
+        more=_more_clusters(book, scope),
     )
+
+
+def _more_clusters(book: Book, scope: Scope) -> tuple[Rejection, ...]:
+    """Draw the rejections on when exceptions fall, but for the one that the sentence itself is about."""
+    shown = ("christoffersen-independence", scope.size_level, scope.kind)
+    return tuple(r for r in rejections(book, scope, "when") if (r.test, r.level, r.kind) != shown)
 
 
 def _densest(places: np.ndarray) -> tuple[int, int, int]:
@@ -131,16 +184,16 @@ def size(book: Book, scope: Scope) -> Size:
     daily = daily[daily["loss"].notna()]
     var = _sufficient(book, scope, "VaR", "sufficient-var-multiple", daily["var"])
     es = _sufficient(book, scope, "ES", "sufficient-es-multiple", daily["es"])
-    return Size(scope, var, es if es.estimate is not None else None)
+    return Size(scope, var, es if es.estimate is not None else None, rejections(book, scope, "how deep"))
 
 
 def _sufficient(book: Book, scope: Scope, measure: str, test: str, values: "pd.Series[float]") -> Sufficient:
     row: Row | None = book.result(test, scope.desk, scope.model, scope.span, scope.kind, scope.size_level)
     average = given(values[values > 0].mean())
     if row is None:
-        return Sufficient(measure, None, None, None, average, "not tested: the multiple was not asked for")
+        return Sufficient(measure, None, None, None, average, 0, "not tested: the multiple was not asked for")
     value, low, high = (given(row[c]) for c in ("estimate", "low", "high"))
-    return Sufficient(measure, value, low, high, average, text(row["phrase"]) or text(row["note"]))
+    return Sufficient(measure, value, low, high, average, int(row["days"]), text(row["phrase"]) or text(row["note"]))
 
 
 def bridges(book: Book, desk: str) -> list[Bridge]:
@@ -149,6 +202,12 @@ def bridges(book: Book, desk: str) -> list[Bridge]:
     for row in book.bridge(desk):
         groups.setdefault((given(row["level"]), text(row["pnl_kind"])), []).append(row)
     return [_bridge(book, desk, level, kind, rows) for (level, kind), rows in groups.items()]
+
+
+def other_bridges(book: Book, scope: Scope) -> list[Bridge]:
+    """Draw the bridges of the main one's desk and P&L kind at its other levels."""
+    main = main_bridge(book, scope)
+    return [b for b in bridges(book, scope.desk) if main and b.steps and b.kind == main.kind and b.level != main.level]
 
 
 def main_bridge(book: Book, scope: Scope) -> Bridge | None:
@@ -192,33 +251,3 @@ def power(book: Book) -> Power | None:
         return None
     level, nominal, true = (float(kept[k]) for k in ("level", "nominal_rate", "true_rate"))
     return Power(level, nominal, true, int(kept["days"]), float(kept["power"]))
-
-
-def person(book: Book, scope: Scope) -> Person:
-    """Draw what a person has to look at: fallbacks, remarks, exceptions to explain, desks without a full answer."""
-    fell = book.mapping("fallbacks")
-    log = book.record.exceptions
-    recent = 0 if log.empty else int((log["date"] >= pd.Timestamp(scope.span.first)).sum())
-    with_challengers = [d for d in book.desks if book.forecasts(d)["model"].isin(book.models).any()]
-    without = tuple(d for d in book.desks if d not in with_challengers)
-    return Person(
-        scope=scope,
-        forecasts=int(fell.get("forecasts", 0)),
-        fallbacks=int(fell.get("fallbacks", 0)),
-        remarks=len(book.record.remarks),
-        exceptions=recent,
-        since=scope.span.first,
-        unforecast=without,
-        short=tuple((d, n) for d, n in _short(book) if scope.is_subject or d not in without),
-    )
-
-
-def _short(book: Book) -> tuple[tuple[str, int], ...]:
-    """Desks with fewer forecast days than the span asked for; a day without P&L keeps its forecast and counts."""
-    if book.wanted_days is None:
-        return ()
-    days = {
-        d: int((book.forecasts(d)["model"] == book.main_model).groupby(book.forecasts(d)["date"]).any().sum())
-        for d in book.desks
-    }
-    return tuple((d, n) for d, n in days.items() if n < book.wanted_days)

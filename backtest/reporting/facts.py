@@ -38,8 +38,19 @@ class Count:
 
 
 @dataclass(frozen=True)
+class Rejection:
+    """A test that rejects over the main span, at a level and on a P&L kind, with its answer in words."""
+
+    test: str
+    level: float
+    kind: str
+    p: float
+    phrase: str
+
+
+@dataclass(frozen=True)
 class RuleCount:
-    """What a dated rule says: its count, zone and multiplier; ``note`` why there is no zone, where there is none."""
+    """What a dated rule says: its count, zone and multiplier; ``note`` why there is no zone or no multiplier."""
 
     name: str
     count: int | None
@@ -55,43 +66,51 @@ class Often:
     scope: Scope
     counts: tuple[Count, ...]
     rule: RuleCount | None
+    more: tuple[Rejection, ...] = ()
 
 
 @dataclass(frozen=True)
 class When:
-    """When: how close together most exceptions fall, and what the independence test says."""
+    """When: how close together most exceptions fall, what the independence test says, what else rejects.
+
+    ``even`` is how many days evenly spaced exceptions would take for as many as fell within ``width``.
+    """
 
     scope: Scope
     exceptions: int
     days: int
     inside: int
     width: int
+    even: float
     first: str
     last: str
     p: float | None
     rejected: bool
     note: str
+    more: tuple[Rejection, ...] = ()
 
 
 @dataclass(frozen=True)
 class Sufficient:
-    """The multiple of a reported measure that would have sufficed, and the average of the measure in money."""
+    """The multiple of a measure that would have sufficed on ``days`` days, and the measure's average in money."""
 
     measure: str
     estimate: float | None
     low: float | None
     high: float | None
     average: float | None
+    days: int
     note: str
 
 
 @dataclass(frozen=True)
 class Size:
-    """By how much: the sufficient multiples of VaR and, where known, of ES."""
+    """By how much: the sufficient multiples of VaR and, where known, of ES; what rejects on the depth of losses."""
 
     scope: Scope
     var: Sufficient
     es: Sufficient | None
+    more: tuple[Rejection, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -138,8 +157,19 @@ class Power:
 
 
 @dataclass(frozen=True)
+class DeskCounts:
+    """Desks whose count is rejected at ``level``, of ``desks`` with a p-value; how many chance gives at most."""
+
+    level: float
+    rejected: tuple[str, ...]
+    too_high: tuple[str, ...]
+    desks: int
+    by_chance: float
+
+
+@dataclass(frozen=True)
 class Person:
-    """What needs a person."""
+    """What needs a person; ``flagged`` are statuses of forecasts kept as made, with how many, most first."""
 
     scope: Scope
     forecasts: int
@@ -149,3 +179,5 @@ class Person:
     since: str
     unforecast: tuple[str, ...]
     short: tuple[tuple[str, int], ...]
+    flagged: tuple[tuple[str, int], ...] = ()
+    counts: DeskCounts | None = None

@@ -8,7 +8,8 @@ def input_lines(inputs: Inputs) -> list[str]:
     """Return lines on files, desks, days and every remark of checked inputs."""
     lines = [f"{s.role}: {s.name}, {say.plural(s.rows, 'row')}, sha256 {s.sha256[:12]}" for s in inputs.sources]
     desks, days = inputs.pnl["desk"].nunique(), len(inputs.calendar)
-    lines.append(f"{say.plural(desks, 'desk')}, {say.plural(days, 'business day')}, {inputs.calendar[0]} to {inputs.as_of} (cut-off)")
+    counts = f"{say.plural(desks, 'desk')}, {say.plural(days, 'business day')}"
+    lines.append(f"{counts}, {inputs.calendar[0]} to {inputs.as_of} (cut-off)")
     lines.append(say.plural(len(inputs.remarks), "remark") + (":" if inputs.remarks else ""))
     return lines + [remark_line(remark) for remark in inputs.remarks]
 

@@ -50,7 +50,7 @@ def _lacking_es(row: Row, book: Book) -> str:
         return "needs ES, of which none was given"
     here = own[own["level"] == row["level"]]
     if here.empty:
-        levels = say.listed([say.level(v) for v in sorted(own["level"].unique())])
+        levels = say.listed([say.level(v) for v in sorted({float(at) for at in own["level"]})])
         return f"needs ES at {say.level(row['level'])}; it was given at {levels} only"
     return f"needs ES on days judged; it was given on {say.plural(len(here), 'other day')} only"
 

@@ -6,14 +6,21 @@ from dataclasses import dataclass
 from backtest.records import Record
 from backtest.reporting import wording as say
 from backtest.reporting.book import Book
-from backtest.reporting.drawn import main_bridge, often, person, power, scope_of, size, when
-from backtest.reporting.facts import Bridge, Count, Often, Person, Power, RuleCount, Scope, Size, Step, Sufficient, When
+from backtest.reporting.drawn import main_bridge, often, other_bridges, power, scope_of, size, when
+from backtest.reporting.effects import test_name
+from backtest.reporting.facts import Count, Often, Power, Rejection, RuleCount, Scope, Size, Sufficient, When
+from backtest.reporting.open_points import needs_person, person
+from backtest.reporting.prose import prose
+from backtest.reporting.steps import why
 
 QUESTIONS = (
     "How often?", "When?", "By how much?", "Why?", "What could this review not see?", "What needs a person?",
 )  # fmt: skip
 POSITIONS = "Challengers learn from past P&L (or vectors); the reported VaR from current positions."
 CAPITAL_ES = "The ten-day stressed ES used for capital was not tested."
+JOINT = "christoffersen-coverage"
+BUNCHED = 0.8
+"""Exceptions are said to be bunched where they take less than this share of what even spacing would take."""
 NOTHING = "Not tested: the record holds no day with both a forecast and a P&L."
 
 
@@ -34,14 +41,15 @@ def sentences(book: Book) -> tuple[Sentence, ...]:
     """Return the six sentences of a record."""
     scope = scope_of(book)
     if scope is None:
-        answers: tuple[str, ...] = (NOTHING,) * 4 + (unseen(power(book)), "A run with days to judge.")
+        answers: tuple[str, ...] = (NOTHING,) * 4 + (unseen(power(book), False), "A run with days to judge.")
     else:
+        counts = often(book, scope)
         answers = (
-            how_often(often(book, scope)),
+            how_often(counts),
             when_they_fell(when(book, scope)),
             by_how_much(size(book, scope)),
-            why(main_bridge(book, scope)),
-            unseen(power(book)),
+            why(main_bridge(book, scope), other_bridges(book, scope)),
+            unseen(power(book), scope.is_subject and any(c.p is not None for c in counts.counts)),
             needs_person(person(book, scope)),
         )
     return tuple(Sentence(q, a) for q, a in zip(QUESTIONS, answers, strict=True))
@@ -51,13 +59,16 @@ def about(scope: Scope) -> str:
     """Say which desk and model the first page is about, and why that one."""
     desk, model = say.name(scope.desk), say.name(scope.model)
     who = f"{desk}, the whole firm" if scope.is_firm else desk
-    chosen = ""
-    if not scope.is_firm and scope.desks > 1:
-        chosen = (
-            f", of {scope.desks} desks the one whose count is furthest above its expectation; no firm row was judged"
-        )
+    chosen = f"{_chosen(scope)}; no firm row was judged" if _chosen(scope) else ""
     what = f"the reported model {model}" if scope.is_subject else f"no reported model was supplied, challenger {model}"
     return f"{who}{chosen}; {what}"
+
+
+def _chosen(scope: Scope) -> str:
+    """Say why the page speaks of this desk, where it is one of several and not the firm."""
+    if scope.is_firm or scope.desks < 2:
+        return ""
+    return f", of {scope.desks} desks the one whose count is furthest above its expectation"
 
 
 def how_often(facts: Often) -> str:
@@ -66,24 +77,29 @@ def how_often(facts: Often) -> str:
     if not facts.counts:
         return f"Not tested: no count of exceptions was asked for at {say.level(scope.count_level)}."
     level, days = say.level(scope.count_level), max(c.days for c in facts.counts)
-    expectation = f"{say.expected(days, scope.count_level)} were to be expected"
+    desk, expectation = (
+        say.name(scope.desk) + _chosen(scope),
+        f"{say.expected(days, scope.count_level)} were to be expected",
+    )
+    more = _more(facts.more, scope)
     if not scope.is_subject:
         each = ", ".join(f"{say.name(c.name)} {say.whole(c.exceptions)}" for c in facts.counts)
-        return (
-            f"{say.name(scope.desk)}: no reported VaR was supplied. In {say.whole(days)} days on {scope.kind} P&L "
+        head = (
+            f"{desk}: no reported VaR was supplied. In {say.plural(days, 'day')} on {scope.kind} P&L "
             f"losses exceeded the challengers' {level} VaR on this many days: {each}; {expectation}."
         )
+        return " ".join(p for p in (head, _of_model(more, scope), _rule(facts)) if p)
     counts = " and ".join(f"on {_rate(c, 1 - scope.count_level)} on {c.name} P&L" for c in facts.counts)
-    parts = [
-        f"{say.name(scope.desk)}: losses exceeded the {level} VaR of {say.name(scope.model)} {counts}; {expectation}."
-    ]
-    parts += [_evidence(facts.counts, scope), _rule(facts), _length(scope, days, facts.rule)]
+    parts = [f"{desk}: losses exceeded the {level} VaR of {say.name(scope.model)} {counts}; {expectation}."]
+    parts += [_evidence(facts.counts, scope), more, _rule(facts), _length(scope, days, facts.rule)]
     return " ".join(p for p in parts if p)
 
 
 def _rate(count: Count, share: float) -> str:
     return (
-        say.rate(count.exceptions, count.days, share) if count.exceptions else f"none of {say.whole(count.days)} days"
+        say.rate(count.exceptions, count.days, share)
+        if count.exceptions
+        else f"none of {say.plural(count.days, 'day')}"
     )
 
 
@@ -92,7 +108,7 @@ def _evidence(counts: Sequence[Count], scope: Scope) -> str:
     for c in counts:
         if c.p is not None:
             said.setdefault(_verdict(c, scope), []).append(f"{say.p_value(c.p, scope.significance)} on {c.name}")
-    return " ".join(f"{verdict} ({'; '.join(ps)}; exact binomial)." for verdict, ps in said.items())
+    return " ".join(f"{verdict} ({'; '.join(ps)}; exact binomial, two-sided)." for verdict, ps in said.items())
 
 
 def _verdict(count: Count, scope: Scope) -> str:
@@ -102,13 +118,31 @@ def _verdict(count: Count, scope: Scope) -> str:
     return "Evidence that the VaR is too low" if too_many else "So few are evidence that the VaR is too high"
 
 
+def _more(found: Sequence[Rejection], scope: Scope) -> str:
+    """Say what further tests reject, each answer once: tests, levels, P&L kinds and p-values in brackets."""
+    said: dict[str, dict[str, list[str]]] = {}
+    for r in found:
+        p = f"{say.level(r.level)} {r.kind} {say.p_value(r.p, scope.significance)}"
+        said.setdefault(prose(r.phrase), {}).setdefault(test_name(r.test), []).append(p)
+    sentences = []
+    for phrase, tests in said.items():
+        where = "; ".join(f"{name}: {', '.join(ps)}" for name, ps in tests.items())
+        sentences.append(f"{phrase[:1].upper()}{phrase[1:]} ({where}).")
+    return " ".join(sentences)
+
+
+def _of_model(more: str, scope: Scope) -> str:
+    return f"Of {say.name(scope.model)}: {more[0].lower()}{more[1:]}" if more else ""
+
+
 def _rule(facts: Often) -> str:
     rule = facts.rule
     if rule is None:
         return ""
     if rule.count is None or not rule.zone:
-        return f"Rule {rule.name}: {rule.note}."
-    multiplier = "" if rule.multiplier is None else f", multiplier {say.multiple(rule.multiplier)}"
+        return f"Rule {rule.name}: {prose(rule.note)}."
+    multiplier = f", no multiplier ({rule.note})" if rule.note else ""
+    multiplier = multiplier if rule.multiplier is None else f", multiplier {say.multiple(rule.multiplier)}"
     more = rule.count > max(c.exceptions for c in facts.counts)
     how = " (days without P&L or VaR count as exceptions)" if more else ""
     return f"Rule {rule.name}: count {say.whole(rule.count)}{how}, {rule.zone}{multiplier}."
@@ -118,29 +152,39 @@ def _length(scope: Scope, days: int, rule: RuleCount | None) -> str:
     if scope.wanted_days is None or days >= scope.wanted_days:
         return ""
     zone = "" if rule else ": no zone"
-    return f"Only {say.whole(days)} of {say.whole(scope.wanted_days)} days have both a P&L and a forecast{zone}."
+    return f"Only {say.whole(days)} of {say.plural(scope.wanted_days, 'day')} have both a P&L and a forecast{zone}."
 
 
 def when_they_fell(facts: When) -> str:
     """Say how close together most exceptions fell, and what the independence test says."""
     scope, level = facts.scope, say.level(facts.scope.size_level)
-    where = f"the {level} VaR of {say.name(scope.model)} ({scope.kind} P&L, {say.whole(facts.days)} days)"
-    independence = _independence(facts)
+    where = f"the {level} VaR of {say.name(scope.model)} ({scope.kind} P&L, {say.plural(facts.days, 'day')})"
+    independence = " ".join(p for p in (_independence(facts), _together(facts)) if p)
     if facts.exceptions == 0:
         return f"No loss exceeded {where}, so nothing can be said about when they fall. {independence}"
     if facts.exceptions < 4:
         few = say.plural(facts.exceptions, "loss", "losses")
         return f"{few[0].upper()}{few[1:]} exceeded {where}: too few to speak of clusters. {independence}"
-    even = say.whole(round(facts.inside * facts.days / facts.exceptions))
+    spread = f"evenly spaced they would take about {say.whole(round(facts.even))}, by chance alone less"
+    bunched = facts.width < BUNCHED * facts.even
     return (
-        f"{facts.inside} of the {facts.exceptions} losses beyond {where} fell within {say.whole(facts.width)} business "
-        f"days, {facts.first} to {facts.last}; evenly spread they would take about {even}. {independence}"
+        f"{facts.inside} of the {facts.exceptions} losses beyond {where} fell within "
+        f"{say.plural(facts.width, 'business day')}, {facts.first} to {facts.last}"
+        f"{f'; {spread}' if bunched else ': not bunched'}. {independence}"
     )
+
+
+def _together(facts: When) -> str:
+    """Say what else rejects: independence elsewhere, then rate and independence tested together."""
+    joint = [r for r in facts.more if r.test == JOINT]
+    alone = _more([r for r in facts.more if r.test != JOINT], facts.scope)
+    said = _more(joint, facts.scope)
+    return " ".join(p for p in (alone, f"Together with the count: {said[0].lower()}{said[1:]}" if said else "") if p)
 
 
 def _independence(facts: When) -> str:
     if facts.p is None:
-        return f"Independence: {facts.note or 'not tested'}."
+        return f"Independence: {prose(facts.note) or 'not tested'}."
     verb = "is rejected" if facts.rejected else "is not rejected, which does not show it"
     p = say.p_value(facts.p, facts.scope.significance)
     return f"Independence from one day to the next {verb} (Christoffersen, {p})."
@@ -148,21 +192,27 @@ def _independence(facts: When) -> str:
 
 def by_how_much(facts: Size) -> str:
     """Say which multiple of the VaR, and of the ES, would have sufficed, and what that is in money."""
-    parts = [_sufficient(facts.var, facts.scope)] + ([_sufficient(facts.es, facts.scope)] if facts.es else [])
-    limits = " Intervals are 95%, if days were independent." if facts.var.estimate is not None else ""
-    return " ".join(parts) + limits
+    scope, var, es = facts.scope, facts.var, facts.es
+    of = f" of {say.name(scope.model)} ({scope.kind} P&L, {say.plural(var.days, 'day')})" if var.days else ""
+    parts = [_sufficient(var, scope, of)]
+    if es:
+        parts.append(_sufficient(es, scope, "" if es.days == var.days else f" ({say.plural(es.days, 'day')})"))
+    if var.estimate is not None:
+        parts.append("The VaR interval is 95%, if days were independent.")
+    if es:
+        parts.append("The ES interval is a 95% bootstrap over days and too short with few losses beyond the VaR.")
+    return " ".join(p for p in (*parts, _more(facts.more, scope)) if p)
 
 
-def _sufficient(facts: Sufficient, scope: Scope) -> str:
-    name = f"{say.level(scope.size_level)} {facts.measure}"
+def _sufficient(facts: Sufficient, scope: Scope, of: str) -> str:
+    name = f"{say.level(scope.size_level)} {facts.measure}{of}"
     if facts.estimate is None:
-        return f"The multiple of the {name} that would have sufficed: {facts.note or 'not tested'}."
+        return f"The multiple of the {name} that would have sufficed: {prose(facts.note) or 'not tested'}."
     short = facts.estimate > 1
     verb = "would have had to be" if short else "would have sufficed at"
     size = f"{say.multiple(facts.estimate)} times {'as large' if short else 'its size'}"
-    return (
-        f"The {name} {verb} {size} ({say.interval(facts.low, facts.high)}){_in_money(facts, scope)}{_holds_one(facts)}."
-    )
+    one = _holds_one(facts) if facts.measure == "VaR" else ""
+    return f"The {name} {verb} {size} ({say.interval(facts.low, facts.high)}){_in_money(facts, scope)}{one}."
 
 
 def _in_money(facts: Sufficient, scope: Scope) -> str:
@@ -180,70 +230,13 @@ def _holds_one(facts: Sufficient) -> str:
     return "; the interval holds 1, the size reported"
 
 
-def why(bridge: Bridge | None) -> str:
-    """Say what each step of the bridge changes, over the days that all steps share."""
-    if bridge is None or bridge.level is None or not bridge.steps:
-        return f"The bridge was not built: {(bridge.note if bridge else '') or 'none was asked for'}."
-    head = (
-        f"Over {say.whole(bridge.days)} shared days at {say.level(bridge.level)} "
-        f"({say.expected(bridge.days, bridge.level)} exceptions expected)"
-    )
-    taken = [s for s in bridge.steps if s.exceptions is not None and s.average_var is not None]
-    left = [f"{s.name} {s.note}" for s in bridge.steps if s not in taken and s.note]
-    counts = "; ".join(_step(s, bridge.currency, i == 0) for i, s in enumerate(taken))
-    parts = [f"{head}: {counts}.", _gain(taken), _price(taken)] + [f"Not in it: {'; '.join(left)}."] * bool(left)
-    return " ".join(p for p in parts if p)
-
-
-def _step(step: Step, currency: str, first: bool) -> str:
-    shown = say.money(step.average_var or 0.0, currency)
-    label = "" if not first else " exceptions at an average VaR of"
-    return f"{step.name} {say.whole(step.exceptions or 0)}{label or ' at'} {shown}"
-
-
-def _gain(steps: Sequence[Step]) -> str:
-    known = [s for s in steps[1:] if s.low is not None and s.high is not None]
-    better = [s.name for s in known if s.high is not None and s.high < 0]
-    worse = [s.name for s in known if s.low is not None and s.low > 0]
-    unclear = [s.name for s in known if s.name not in better and s.name not in worse]
-    parts = [f"score better beyond chance: {say.listed(better)}"] * bool(better)
-    parts += [f"score worse beyond chance: {say.listed(worse)}"] * bool(worse)
-    parts += [f"cannot be told from no change: {say.listed(unclear)}"] * bool(unclear)
-    return f"Step by step, {'; '.join(parts)}." if parts else ""
-
-
-def _price(steps: Sequence[Step]) -> str:
-    if len(steps) < 2 or not steps[0].average_change or steps[-1].average_change is None:
-        return ""
-    ratio = say.ratio(steps[-1].average_change / steps[0].average_change)
-    return f"From day to day the last step's VaR moves {ratio} times as much as the first's."
-
-
-def unseen(facts: Power | None) -> str:
-    """Say what a review of this length cannot see, and what was not tested at all."""
+def unseen(facts: Power | None, beside_p: bool) -> str:
+    """Say what a review of this length cannot see, and what was not tested; ``beside_p``: sentence 1 has a p-value."""
     if facts is None:
         return f"The power of the count was not computed. {CAPITAL_ES}"
+    other = "; the two-sided p of sentence 1 sees less" if beside_p else ""
     return (
         f"A {say.level(facts.level)} VaR whose true coverage is {say.level(1 - facts.true_rate)} is caught in "
-        f"{say.in_hundred(facts.power)} reviews of {say.whole(facts.days)} days (one-sided exact binomial at 5%, days "
-        f"independent). {CAPITAL_ES}"
+        f"{say.in_hundred(facts.power)} reviews of {say.plural(facts.days, 'day')} (one-sided exact binomial at 5%, "
+        f"days independent{other}). {CAPITAL_ES}"
     )
-
-
-def needs_person(facts: Person) -> str:
-    """Say what a person has to look at, decide or explain."""
-    some = say.whole(facts.fallbacks) if facts.fallbacks else "None"
-    fell = f"{some} of {say.plural(facts.forecasts, 'forecast')} fell back on a stated substitute"
-    if not facts.forecasts:
-        fell = "No challenger was forecast"
-    log = say.plural(facts.exceptions, "desk-day") + f" with an exception since {facts.since} to explain"
-    parts = [fell, f"{say.plural(facts.remarks, 'data remark')} to read", log]
-    if facts.unforecast and facts.forecasts:
-        parts.append(f"without any challenger: {say.listed([say.name(d) for d in facts.unforecast])}")
-    if facts.short:
-        short = [
-            f"{say.name(name)} ({say.whole(n)} of {say.whole(facts.scope.wanted_days or 0)} days)"
-            for name, n in facts.short
-        ]
-        parts.append(f"judged on less than was asked for: {say.listed(short)}")
-    return "; ".join(parts) + ". The opinion is a person's to give; none is given here."

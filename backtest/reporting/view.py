@@ -8,15 +8,17 @@ from backtest.reporting import figures
 from backtest.reporting import wording as say
 from backtest.reporting.book import Book, Row, given, text
 from backtest.reporting.drawn import bridges, main_bridge, rule_count, scope_at, scope_of
+from backtest.reporting.effects import estimate
 from backtest.reporting.facts import Scope
 from backtest.reporting.logs import exceptions_table, remarks_table
+from backtest.reporting.open_points import flagged
+from backtest.reporting.prose import answer, prose
 from backtest.reporting.sentences import POSITIONS, Sentence, about, sentences
 from backtest.reporting.tables import (
     Table,
     bridge_table,
     bridge_words,
     challenger_tables,
-    estimate,
     exceptions_cell,
     result_tables,
     span_words,
@@ -106,7 +108,7 @@ def summary_view(record: Record) -> Summary:
         bridge=bridge_table(bridge) if bridge and bridge.steps else None,
         index=_index(book),
         desks=tuple(_desk(book, desk, f"desk-{i}") for i, desk in enumerate(book.desks, start=1)),
-        models=_models(record),
+        models=_models(book),
         tests=tuple(Fact(*pair) for pair in tests_used(book)),
         remarks=remarks_table(record.remarks, f"Data remarks, {say.whole(len(record.remarks))} in all"),
         sources=_sources(record),
@@ -137,8 +139,9 @@ def _rule_fact(book: Book, scope: Scope) -> Fact:
     if rule is None:
         return Fact("Rule", "none applied")
     if rule.count is None or not rule.zone:
-        return Fact(f"Rule {rule.name}", rule.note)
-    multiplier = "" if rule.multiplier is None else f", multiplier {say.multiple(rule.multiplier)}"
+        return Fact(f"Rule {rule.name}", prose(rule.note))
+    multiplier = f", no multiplier: {rule.note}" if rule.note else ""
+    multiplier = multiplier if rule.multiplier is None else f", multiplier {say.multiple(rule.multiplier)}"
     return Fact(f"Rule {rule.name}", f"count {say.whole(rule.count)}: {rule.zone}{multiplier}", rule.zone)
 
 
@@ -169,19 +172,19 @@ def _index_row(book: Book, desk: str, levels: list[float]) -> tuple[str, ...]:
         desk,
         days,
         *(exceptions_cell(counts[lv]) for lv in levels),
-        estimate(size) if size else say.DASH,
-        _how_often(counts, count),
+        estimate(size, book.currency) if size else say.DASH,
+        _how_often(book, counts, count),
     )
 
 
-def _how_often(counts: Mapping[float, Row | None], count: Row | None) -> str:
+def _how_often(book: Book, counts: Mapping[float, Row | None], count: Row | None) -> str:
     """Return the answers of the levels that reject, else that of the level of counts."""
     said: dict[str, list[str]] = {}
     for level, row in counts.items():
         if row is not None and row["decision"] == "rejected":
             said.setdefault(text(row["phrase"]), []).append(say.level(level))
     found = "; ".join(f"{phrase} ({say.listed(levels)})" for phrase, levels in said.items())
-    return found or (text(count["phrase"]) if count else "") or "not tested"
+    return found or (answer(count, book) if count else "not tested")
 
 
 def _desk(book: Book, desk: str, anchor: str) -> DeskView:
@@ -240,12 +243,19 @@ def _figure(book: Book, desk: str, level: float, anchor: str) -> FigureView | No
     return FigureView(figures.draw(data, anchor), figures.caption(data, desk)) if data else None
 
 
-def _models(record: Record) -> tuple[Fact, ...]:
-    listed = record.manifest.get("models")
+def _models(book: Book) -> tuple[Fact, ...]:
+    listed = book.record.manifest.get("models")
     rows = listed if isinstance(listed, list) else []
-    return tuple(
+    models = tuple(
         Fact(str(m["name"]), ". ".join(p for p in (text(m.get("line")), text(m.get("source"))) if p)) for m in rows
     )
+    every = int(book.mapping("fallbacks").get("forecasts", 0))
+    return models + tuple(Fact(f"Status: {status}", _status(n, every)) for status, n in flagged(book))
+
+
+def _status(n: int, every: int) -> str:
+    share = f" ({say.percent(n / every)})" if every else ""
+    return f"{say.whole(n)} of {say.plural(every, 'desk x day x model forecast')}{share}, kept as made"
 
 
 def _sources(record: Record) -> Table:

@@ -25,14 +25,13 @@ from tests.reference.datasets import bmw, sp500
 
 WINDOW, EVERY, LEVELS = 1000, 40, (0.975, 0.99)
 SERIES: dict[str, Callable[[], pd.Series]] = {"S&P 500": sp500, "BMW": bmw}
+CONSTANT, AR1 = {"mean": "Constant"}, {"mean": "AR", "lags": 1}
 MEMBERS = {
-    "C-GARCH-normal": ({"filter": "garch", "mean": "constant"}, {"mean": "Constant", "o": 0}),
-    "AR1-GARCH-normal": ({"filter": "garch", "mean": "ar1"}, {"mean": "AR", "lags": 1, "o": 0}),
-    "C-GARCH-t": ({"filter": "garch", "mean": "constant", "innovations": "t"}, {"mean": "Constant", "o": 0, "dist": "t"}),
-    "AR1-GJR-t": (
-        {"filter": "gjr", "mean": "ar1", "innovations": "t"}, {"mean": "AR", "lags": 1, "o": 1, "dist": "t"}
-    ),
-}  # fmt: skip
+    "C-GARCH-normal": ({"filter": "garch", "mean": "constant"}, {**CONSTANT, "o": 0}),
+    "AR1-GARCH-normal": ({"filter": "garch", "mean": "ar1"}, {**AR1, "o": 0}),
+    "C-GARCH-t": ({"filter": "garch", "mean": "constant", "innovations": "t"}, {**CONSTANT, "o": 0, "dist": "t"}),
+    "AR1-GJR-t": ({"filter": "gjr", "mean": "ar1", "innovations": "t"}, {**AR1, "o": 1, "dist": "t"}),
+}
 
 
 class Reference(NamedTuple):

@@ -123,9 +123,9 @@ def test_draws_depend_on_seed_and_day_alone():
     ("options", "said"),
     [
         ({"bands": "profile"}, "unknown bands"),
-        ({"horizons": [0]}, "horizon cannot be used"),
-        ({"horizons": [2.5]}, "horizon cannot be used"),
-        ({"horizons": [251]}, "whole days from 1 to 250"),
+        ({"horizons": [0]}, "forecast.horizons: .* found 0 "),
+        ({"horizons": [2.5]}, "forecast.horizons: .* found 2.5 "),
+        ({"horizons": [251]}, "at least 1, at most 250"),
         ({"paths": 10}, "at least 1000"),
         ({"bootstraps": 5}, "at least 99"),
         ({"bootstrap_days": 0}, "at least 1"),

@@ -41,12 +41,36 @@ def test_the_garch_default_is_an_ar1_mean_and_the_sample_variance():
         ({"name": "m", "filter": "reported", "mean": "ar1"}, "mean does not belong to reported"),
         ({"name": "m", "windw": 500}, "Did you mean 'window'?"),
         ({"name": "m", "tail": "gpd", "window": 100}, "at least 20 excesses"),
+        ({"name": "m", "filter": "ewma", "decay": 1.0}, "decay: .* between 0 and 1"),
+        ({"name": "m", "filter": "ewma", "decay": "0.9"}, "decay: .* found '0.9'"),
+        ({"name": "m", "filter": "ewma", "decay": float("nan")}, "decay: .* found nan"),
+        ({"name": "m", "tail": "age-weighted", "age_decay": 0}, "age_decay: .* found 0"),
+        ({"name": "m", "tail": "gpd", "tail_share": 0.5}, "tail_share: .* between 0 and 0.5"),
+        ({"name": "m", "tail": "gpd", "tail_share": True}, "tail_share: .* found True"),
+        ({"name": "m", "window": 49}, "window: .* at least 50"),
+        ({"name": "m", "window": 250.0}, "window: .* found 250.0"),
+        ({"name": "m", "recalibrate_days": 0}, "recalibrate_days: .* at least 1"),
+        ({"name": 5}, "name is not text"),
+        (5, "not a model"),
         ({"name": "m", "tail": "gpd", "tail_share": 0.02}, "the tail starts beyond a level"),
     ],
 )
 def test_what_does_not_exist_or_fit_is_refused_with_a_remedy(model, said):
     with pytest.raises(StudyError, match=said.replace("?", r"\?")):
         resolve(model, levels=LEVELS)
+
+
+@pytest.mark.parametrize("options", [{"filter": "ewma"}, {"tail": "normal"}, {"tail": "gpd"}])
+def test_the_name_of_a_named_model_stands_for_that_pair_alone(options):
+    with pytest.raises(StudyError, match=r"bears the name .*'historical'.* Give the pair a name of its own"):
+        resolve({"name": "historical", **options}, levels=LEVELS)
+    assert resolve({"name": "historical", "window": 500}, levels=LEVELS).window == 500
+
+
+def test_a_list_of_models_is_a_list():
+    for models in ("historical", {"name": "m"}, 5):
+        with pytest.raises(StudyError, match=r"forecast\.models: not a list"):
+            resolve_all(models, levels=LEVELS)
 
 
 def test_two_models_of_one_name_are_refused():

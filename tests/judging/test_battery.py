@@ -241,6 +241,8 @@ def test_a_desk_called_na_is_a_desk():
         (lambda p, f: (p.iloc[:0], f), "the table has no rows"),
         (lambda p, f: (p, f.assign(var=np.inf)), "an infinite value, found inf"),
         (lambda p, f: (p, f.assign(var="2,0")), "column 'var' does not hold numbers"),
+        (lambda p, f: (p, f.assign(var=1j)), "column 'var' does not hold numbers"),
+        (lambda p, f: (p, f.assign(var=True)), "column 'var' does not hold numbers"),
         (lambda p, f: (p.assign(date=p["date"].astype(str)), f), "column 'date' does not hold dates"),
         (lambda p, f: (p, f.assign(desk=None)), "column 'desk' has an empty cell"),
         (lambda p, f: (p, f.assign(horizon=10)), "no one-day forecasts"),
@@ -252,10 +254,42 @@ def test_tables_that_cannot_be_used_are_refused(change, message):
         judge_table(pnl, forecasts, tests=["kupiec"])
 
 
-@pytest.mark.parametrize("span", [0, -5, 2.5, "everything", True])
-def test_spans_that_are_none_are_refused(span):
-    with pytest.raises(StudyError, match="not a span"):
-        judge_table(*tables(desks("A"), var=2.0), spans=[span])
+@pytest.mark.parametrize(
+    "spans", [[0], [-5], [2.5], ["everything"], [True], [None], [250, 250], ["all", "all"], 250, "all"]
+)
+def test_spans_that_are_none_are_refused(spans):
+    with pytest.raises(StudyError, match=r"^days: "):
+        judge_table(*tables(desks("A"), var=2.0), spans=spans)
+
+
+@pytest.mark.parametrize(
+    ("options", "place"),
+    [
+        ({"simulations": 98}, "simulations"),
+        ({"simulations": 999.0}, "simulations"),
+        ({"simulations": True}, "simulations"),
+        ({"seed": -1}, "seed"),
+        ({"seed": "1"}, "seed"),
+        ({"significance": 0}, "significance"),
+        ({"significance": 0.5}, "significance"),
+        ({"significance": float("nan")}, "significance"),
+        ({"significance": "5%"}, "significance"),
+        ({"tests": None}, "judge.tests"),
+        ({"tests": 5}, "judge.tests"),
+        ({"tests": [None]}, "judge.tests"),
+        ({"tests": [["kupiec"]]}, "judge.tests"),
+    ],
+)
+def test_settings_that_cannot_be_used_are_refused(options, place):
+    with pytest.raises(StudyError) as caught:
+        judge_table(*tables(desks("A"), var=2.0), **options)
+    assert caught.value.place == place
+
+
+@pytest.mark.parametrize("table", [None, [1.0], "forecasts.csv"])
+def test_what_is_no_table_of_forecasts_is_refused(table):
+    with pytest.raises(DataError, match="forecasts table: not a table"):
+        judge_table(tables(desks("A"), var=2.0)[0], table, tests=["kupiec"])
 
 
 def test_var_that_is_not_positive_is_judged_by_counts():

@@ -77,3 +77,19 @@ def test_multiples_as_results():
     short = found[0]
     assert (short.p_value, short.high, short.note) == (None, None, "no upper limit at this length")
     assert short.estimate == pytest.approx(np.sort(losses["A"][-100:])[97] / 2.2)
+
+
+def test_the_bootstrap_of_es_may_say_too_low_and_never_too_high():
+    losses, found = {"A": np.random.default_rng(1).standard_t(5, 300)}, {}
+    for factor in (0.2, 5.0):
+        given = tables(losses, var=2.0 * factor, es=3.0 * factor, levels=(0.975,))
+        found |= {(row.test, factor): row for row in multiple_results(*given, spans=["all"], seed=1)[:2]}
+    assert {key: row.direction for key, row in found.items()} == {
+        ("sufficient-var-multiple", 0.2): "VaR too low",
+        ("sufficient-es-multiple", 0.2): "ES too low",
+        ("sufficient-var-multiple", 5.0): "VaR too high",
+        ("sufficient-es-multiple", 5.0): "",
+    }
+    quiet = found["sufficient-es-multiple", 5.0]
+    assert quiet.high < 1
+    assert "bootstrap over days, too short with few losses beyond the VaR" in quiet.note

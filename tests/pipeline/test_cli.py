@@ -138,7 +138,38 @@ def test_a_refusal_is_one_line_exit_code_2_and_leaves_nothing(small, tmp_path, c
     assert contents(tmp_path) == before
 
 
-def test_a_refusal_after_the_work_leaves_nothing_either(quick):
+def test_a_place_that_cannot_be_written_is_refused_before_the_work(quick):
+    (quick.parent / "file").write_text("in the way", encoding="utf-8")
+    before = contents(quick.parent)
+    said = tailmark("run", quick, "--out", quick.parent / "file" / "deep" / "run")
+    assert said.code == 2
+    (line,) = said.err.splitlines()
+    assert line.startswith(f"tailmark: {quick.parent / 'file' / 'deep' / 'run'}: the run folder cannot be written")
+    assert "--out" in line
+    assert contents(quick.parent) == before
+
+
+@pytest.mark.parametrize("out", ["", " ", "a\0b"])
+def test_an_empty_or_broken_out_is_refused(quick, out):
+    before = contents(quick.parent)
+    said = tailmark("run", quick, "--out", out)
+    assert said.code == 2
+    (line,) = said.err.splitlines()
+    assert "no path of a run folder" in line
+    assert contents(quick.parent) == before
+
+
+def test_a_folder_that_exists_even_empty_is_left_alone_and_said_so(quick, tmp_path):
+    (tmp_path / "mine").mkdir()
+    said = tailmark("run", quick, "--out", tmp_path / "mine")
+    where = f"{tmp_path / 'mine'} exists, so the run is in {tmp_path / 'mine-2'}: nothing is overwritten."
+    assert said.err.splitlines()[-1] == where
+    assert said.out.splitlines()[-1] == f"Summary: {tmp_path / 'mine-2' / 'summary.html'}"
+    assert contents(tmp_path / "mine") == {}
+
+
+def test_a_refusal_after_the_work_leaves_nothing_either(quick, monkeypatch):
+    monkeypatch.setattr(pipeline, "check_place", Path)
     (quick.parent / "file").write_text("in the way", encoding="utf-8")
     before = contents(quick.parent)
     said = tailmark("run", quick, "--out", quick.parent / "file" / "run")
@@ -201,7 +232,7 @@ def test_check_lists_files_days_and_remarks_and_writes_nothing(quick):
     said = tailmark("check", quick)
     assert (said.code, said.err) == (0, "")
     assert "pnl: pnl.csv, 301 rows, sha256 " in said.out
-    assert "1 desks, 300 business days, 2022-12-05 to 2024-01-26 (cut-off)" in said.out.splitlines()
+    assert "1 desk, 300 business days, 2022-12-05 to 2024-01-26 (cut-off)" in said.out.splitlines()
     assert "- restated (pnl.csv, Lumber, 2023-09-11; 1): " in said.out
     assert contents(quick.parent) == before
 
@@ -242,7 +273,7 @@ def test_a_draft_confirmed_as_it_stands_checks(drafted):
     folder, _ = drafted
     said = tailmark("check", folder / "study.toml")
     assert (said.code, said.err) == (0, "")
-    assert any(line.startswith("1 desks, 1,300 business days") for line in said.out.splitlines())
+    assert any(line.startswith("1 desk, 1,300 business days") for line in said.out.splitlines())
 
 
 def test_a_draft_confirmed_as_it_stands_runs(drafted):

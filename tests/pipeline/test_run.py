@@ -316,6 +316,23 @@ def test_a_challenger_may_not_bear_the_name_of_another_reported_model(tables, tm
     assert {p.name for p in tmp_path.iterdir()} == {*files, "study.toml"}
 
 
+@pytest.mark.parametrize("name", ["HS-250 re-performed", "historical 500 (bridge)", "mine sqrt-time"])
+def test_a_model_may_not_bear_a_name_that_a_run_makes_itself(tables, tmp_path, name):
+    text = QUICK.replace("[judge]", f'[[forecast.model]]\nname = "{name}"\nfilter = "ewma"\n[judge]')
+    study = backtest.read_study(write_study(tmp_path, tables, text))
+    with pytest.raises(StudyError, match="kept for what a run makes") as caught:
+        pipeline.check(study)
+    assert caught.value.value == name
+
+
+@pytest.mark.parametrize("workers", [0, -1, 1.5, "2", True])
+def test_workers_are_a_whole_number_of_threads(tables, tmp_path, workers):
+    study = backtest.read_study(write_study(tmp_path, tables, QUICK))
+    with pytest.raises(StudyError, match="workers"):
+        backtest.run(study, workers=workers)
+    assert {p.name for p in tmp_path.iterdir()} == {*tables, "study.toml"}
+
+
 def test_a_bridge_step_does_not_take_the_name_of_another_model(tables, tmp_path):
     """A user's model that is called like a step of the bridge, but is not it, is neither used for it nor doubled."""
     mine = '[[forecast.model]]\nname = "historical 500"\nfilter = "ewma"\n'

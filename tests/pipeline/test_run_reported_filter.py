@@ -41,7 +41,7 @@ def study_text(review='subject = "HS"', data="", forecast="") -> str:
 
 @pytest.fixture(scope="module")
 def files() -> dict[str, pd.DataFrame]:
-    """Two desks, of Wool nothing is reported; Lumber has two days with a VaR of zero; the subject is one of two models."""
+    """Two desks, of Wool nothing is reported; the subject, one of two models, has two days with a VaR of zero."""
     pnl = pnl_series((1000 * garch_t(DAYS, 3)[0]).round(2))
     var = (1000 * np.random.default_rng(1).uniform(1, 3, DAYS)).round(2)
     var[[10, 300]] = 0.0

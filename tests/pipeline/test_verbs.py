@@ -89,10 +89,10 @@ def test_a_business_day_without_pnl_keeps_its_forecast_and_has_no_pit(pnl):
     assert table["pit_hypothetical"].isna().sum() == 1
 
 
-def test_a_desk_shorter_than_the_window_gives_an_empty_table_with_all_columns(pnl):
-    table = backtest.forecast(pnl.iloc[:WINDOW], models=["historical"], levels=LEVELS, window=WINDOW)
-    assert len(table) == 0
-    assert tuple(table.columns) == FORECAST_COLUMNS
+def test_a_window_that_no_desk_reaches_is_refused_and_one_that_a_desk_reaches_is_not(pnl):
+    with pytest.raises(DataError, match=r"no desk reaches the window of 250 days.*250 days with P&L, desk 'desk'"):
+        backtest.forecast(pnl.iloc[:WINDOW], models=["historical"], levels=LEVELS, window=WINDOW)
+    assert len(backtest.forecast(pnl.iloc[: WINDOW + 1], models=["historical"], levels=LEVELS, window=WINDOW)) == 2
 
 
 def test_progress_counts_every_task(pnl):
@@ -113,6 +113,41 @@ REFUSED = {
     "a name twice": ({"models": ["historical", "historical"]}, StudyError, "'historical'"),
     "a window too short for its tail": ({"models": ["unconditional-evt"], "window": 150}, StudyError, "15"),
     "an absent kind": ({"learn_from": "actual"}, StudyError, "'actual'"),
+    "a level twice": ({"levels": [0.99, 0.99]}, StudyError, "twice"),
+    "a level as text": ({"levels": ["0.99"]}, StudyError, "'0.99'"),
+    "a complex level": ({"levels": [0.99j]}, StudyError, "levels"),
+    "a level that is NaN": ({"levels": [float("nan")]}, StudyError, "nan"),
+    "a level too large for a float": ({"levels": [10**400]}, StudyError, "levels"),
+    "one level, not a list": ({"levels": 0.99}, StudyError, "[0.975, 0.99]"),
+    "levels as text": ({"levels": "0.99"}, StudyError, "not a list"),
+    "a short window": ({"window": 49}, StudyError, "at least 50"),
+    "a window as text": ({"window": "250"}, StudyError, "'250'"),
+    "a window that is no whole number": ({"window": 250.0}, StudyError, "250.0"),
+    "a window that is a truth value": ({"window": True}, StudyError, "True"),
+    "a window without end": ({"window": float("inf")}, StudyError, "inf"),
+    "no window": ({"window": None}, StudyError, "None"),
+    "a window beyond all data": ({"window": 10**30}, StudyError, "at most"),
+    "never recalibrated": ({"recalibrate_days": 0}, StudyError, "recalibrate_days"),
+    "recalibrated by halves": ({"recalibrate_days": 1.5}, StudyError, "1.5"),
+    "no worker": ({"workers": 0}, StudyError, "workers"),
+    "workers as text": ({"workers": "all"}, StudyError, "'all'"),
+    "a bare name": ({"models": "historical"}, StudyError, '["historical"]'),
+    "no model": ({"models": []}, StudyError, "no model"),
+    "None for models": ({"models": None}, StudyError, "not a list"),
+    "a number for a model": ({"models": [5]}, StudyError, "not a model"),
+    "a decay of one": ({"models": [{"name": "m", "filter": "ewma", "decay": 1}]}, StudyError, "decay"),
+    "a kept name": ({"models": [{"name": "m sqrt-time"}]}, StudyError, "kept"),
+    "None for a kind": ({"learn_from": None}, StudyError, "learn_from"),
+    "None for bands": ({"bands": None}, StudyError, "bands"),
+    "horizons as text": ({"horizons": "10"}, StudyError, "not a list"),
+    "a horizon that is NaN": ({"horizons": [float("nan")]}, StudyError, "nan"),
+    "a seed as text": ({"seed": "1"}, StudyError, "seed"),
+    "no day in the calendar": ({"calendar": []}, DataError, "no day"),
+    "a calendar of numbers": ({"calendar": [1, 2, 3]}, DataError, "no date"),
+    "a calendar that ends before the P&L": ({"calendar": pd.bdate_range("2010-01-04", periods=400)}, DataError, "span"),
+    "a calendar with a missing day": ({"calendar": [pd.NaT]}, DataError, "missing"),
+    "a list for vectors": ({"vectors": [1], "learn_from": "vectors"}, DataError, "not a table"),
+    "a list for reported": ({"reported": [1], "models": [{"filter": "reported"}]}, DataError, "not a table"),
 }
 
 
@@ -123,6 +158,13 @@ def test_forecast_refuses_what_does_not_exist_or_fit(pnl, case):
         backtest.forecast(pnl, **options)
     assert says in str(caught.value)
     assert "\n" not in str(caught.value)
+
+
+@pytest.mark.parametrize("table", [None, [1.0, 2.0], 5, np.zeros(300), "pnl.csv"])
+def test_what_is_no_table_is_refused_by_both_verbs(made, table):
+    for verb in (lambda: backtest.forecast(table), lambda: backtest.judge(table, made)):
+        with pytest.raises(DataError, match="pnl: not a table"):
+            verb()
 
 
 # judge
@@ -184,6 +226,15 @@ def test_significance_moves_decisions_alone(pnl, made):
 REFUSED_BY_JUDGE = {
     "an unknown test": ({"tests": ["kupeic"]}, StudyError, "Did you mean 'kupiec'?"),
     "a span of zero": ({"days": [0]}, StudyError, "0"),
+    "one span, not a list": ({"days": 250}, StudyError, "not a list"),
+    "a bare word": ({"days": "all"}, StudyError, "not a list"),
+    "a span twice": ({"days": [250, 250]}, StudyError, "twice"),
+    "too few simulations": ({"simulations": 9}, StudyError, "at least 99"),
+    "simulations by halves": ({"simulations": 99.5}, StudyError, "99.5"),
+    "a seed below zero": ({"seed": -1}, StudyError, "seed"),
+    "a significance of one half": ({"significance": 0.5}, StudyError, "significance"),
+    "no tests": ({"tests": None}, StudyError, "judge.tests"),
+    "a number for a test": ({"tests": [5]}, StudyError, "judge.tests"),
 }
 
 

@@ -109,6 +109,12 @@ CASES = [
         pnl_with(5, "2022-01-06,Lumber,1e999"),
     ),
     Broken(
+        "a number beyond all money",
+        DataError,
+        ("line 5, column 'hypothetical'", "not an amount of money", "-1e+160", "Correct"),
+        pnl_with(5, "2022-01-06,Lumber,-1e+160"),
+    ),
+    Broken(
         "an infinite value in Parquet",
         DataError,
         ("pnl.parquet, row 4 (counted from 1), column 'hypothetical'", "inf", "Correct"),

@@ -104,6 +104,17 @@ def test_remark_fires_with_desk_dates_and_count(tmp_path: Path, name: str) -> No
     assert says in remark.text
 
 
+@pytest.mark.parametrize(
+    ("named", "missing"), [("", "review.subject and review.firm"), ('firm = "Firm"', "review.subject")]
+)
+def test_rules_that_lack_the_subject_or_the_firm_are_remarked(tmp_path: Path, named: str, missing: str) -> None:
+    study = STUDY.replace('firm = "Firm"', f'{named}\nrules = "basel-mar32"')
+    (remark,) = remarks(tmp_path, clean(), study)["rules-not-applied"]
+    assert (remark.source, remark.count) == ("study.toml", 1)
+    assert f"'basel-mar32' are not applied: {missing} not named" in remark.text
+    assert "rules-not-applied" not in remarks(tmp_path, clean())
+
+
 def test_four_equal_values_are_no_stretch(tmp_path: Path) -> None:
     found = remarks(tmp_path, put("hpl", 40, 43, 7.0)(clean()))
     assert [rule for rule in found if rule.startswith("unchanged")] == []

@@ -219,6 +219,15 @@ def test_other_names_are_no_risk_columns(name: str) -> None:
         ("rtpl", "risk_theoretical"),
         ("PnL", "any"),
         ("loss", "any"),
+        ("HypPnL", "hypothetical"),
+        ("ActPnL", "actual"),
+        ("hyp_pl", "hypothetical"),
+        ("act_pl", "actual"),
+        ("HPnL", None),
+        ("ActualP&L", "actual"),
+        ("pnlClean", "hypothetical"),
+        ("RTPL", "risk_theoretical"),
+        ("deskpl", None),
         ("desk", None),
         ("stop_loss_limit", None),
     ],
@@ -244,6 +253,23 @@ def test_an_unreadable_file_is_a_data_error(tmp_path: Path, name: str, content: 
         draft_study([tmp_path / name])
     assert name in caught.value.place
     assert caught.value.remedy
+
+
+def test_one_column_a_desk_is_named_as_what_it_is(tmp_path: Path) -> None:
+    wide = firm_table().pivot_table(index="date", columns="desk", values="hpl").reset_index()
+    (tmp_path / "wide.csv").write_text(wide.to_csv(index=False), encoding="utf-8")
+    text = draft_study([tmp_path / "wide.csv"])
+    assert "wide.csv: one column a desk is not read: melt it to date, desk, value" in text
+    assert "no role" not in text
+
+
+def test_a_calendar_of_one_column_does_not_decide_how_files_are_written(tmp_path: Path) -> None:
+    table = firm_table()
+    days = "date\n" + "\n".join(day.strftime("%d.%m.%Y") for day in sorted(set(table["date"])))
+    text, study = drafted(tmp_path, {"days.csv": days, "extract.csv": european(table)})
+    assert (study.data.separator, study.data.decimal, study.data.calendar) == (";", ",", "days.csv")
+    assert "differ" not in text
+    assert_reads(study, table)
 
 
 def test_no_file_is_a_data_error() -> None:

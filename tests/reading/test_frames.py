@@ -5,7 +5,7 @@ import pandas as pd
 import pytest
 
 from backtest.errors import DataError
-from backtest.reading.frames import pnl_table
+from backtest.reading.frames import calendar_days, pnl_table, reported_table, vectors_table
 from backtest.records import DATE_DTYPE
 
 DAYS = pd.bdate_range("2024-01-01", periods=4)
@@ -84,6 +84,20 @@ REFUSED = {
     "a date with a zone": (lambda t: t.assign(date=DAYS.tz_localize("Europe/Paris")), "time zone"),
     "no number": (lambda t: t.assign(hypothetical=["1", "2", "x", "4"]), "hypothetical"),
     "an infinite value": (lambda t: t.assign(actual=[1.0, np.inf, 0.0, 0.0]), "row 1, actual"),
+    "a complex number": (lambda t: t.assign(hypothetical=[1j, 2, 3, 4]), "complex"),
+    "truth values": (lambda t: t.assign(hypothetical=[True, False, True, True]), "bool"),
+    "a truth value among numbers": (
+        lambda t: t.assign(actual=pd.Series([1.0, True, 2.0, 3.0], dtype=object)),
+        "actual",
+    ),
+    "dates for amounts": (lambda t: t.assign(actual=DAYS), "actual"),
+    "more than all money": (lambda t: t.assign(hypothetical=[1.0, 2.0, -1e151, 0.0]), "row 2, hypothetical"),
+    "a desk that is NaN": (lambda t: t.assign(desk=["Wool", np.nan, "Wool", "Wool"]), "row 1, desk"),
+    "a desk that is None": (lambda t: t.assign(desk=["Wool", "Wool", None, "Wool"]), "row 2, desk"),
+    "a desk of blanks": (lambda t: t.assign(desk=" "), "row 0, desk"),
+    "a column twice": (lambda t: pd.concat([t, t[["desk"]]], axis=1), "'desk'"),
+    "no table": (lambda t: t.to_dict("list"), "dict"),
+    "nothing": (lambda t: None, "NoneType"),
     "a row twice": (lambda t: pd.concat([t, t.iloc[[2]]]), "2024-01-03 Wool"),
     "known before its day": (lambda t: t.assign(known_on=DAYS[0]), "row 1, known_on"),
 }
@@ -97,3 +111,44 @@ def test_what_cannot_be_used_is_refused_in_one_line_with_its_place(case):
     assert says in str(caught.value)
     assert caught.value.place.startswith("pnl")
     assert "\n" not in str(caught.value)
+
+
+def test_the_largest_amount_is_taken():
+    assert pnl_table(long_table(hypothetical=[1e150, -1e150, 0.0, 1.0]))["hypothetical"].max() == 1e150
+
+
+@pytest.mark.parametrize("read", [vectors_table, reported_table])
+def test_other_tables_are_tables_too(read):
+    with pytest.raises(DataError, match=r"not a table.*list"):
+        read([1.0], ["Wool"])
+
+
+@pytest.mark.parametrize(
+    "days", [DAYS, DAYS[::-1], list(DAYS), DAYS.to_numpy(), pd.Series(DAYS), DAYS.strftime("%Y-%m-%d")]
+)
+def test_a_calendar_is_sorted_days(days):
+    found = calendar_days(days)
+    assert found.dtype == "datetime64[D]"
+    assert found.tolist() == [day.date() for day in DAYS]
+
+
+NO_CALENDAR = {
+    "no day": ([], "no day"),
+    "numbers": (range(20240101, 20240105), "a number is no date"),
+    "an array of numbers": (np.arange(4), "a number is no date"),
+    "a missing day": ([DAYS[0], pd.NaT], "row 1"),
+    "None among days": ([DAYS[0], None], "row 1"),
+    "text": ("2024-01-01", "not a list of days"),
+    "one number": (5, "not a list of days"),
+    "a table": (long_table(), "not a list of days"),
+    "an array of two dimensions": (np.zeros((2, 2)), "2 dimensions"),
+    "words": (["monday"], "'monday'"),
+}
+
+
+@pytest.mark.parametrize("case", NO_CALENDAR)
+def test_what_is_no_calendar_is_refused(case):
+    days, says = NO_CALENDAR[case]
+    with pytest.raises(DataError, match=says) as caught:
+        calendar_days(days)
+    assert caught.value.place.startswith("calendar")

@@ -6,15 +6,13 @@ import pytest
 from backtest.reporting.book import Book, Span
 from backtest.reporting.drawn import scope_of
 from backtest.reporting.facts import (
-    Bridge,
     Count,
     Often,
-    Person,
     Power,
+    Rejection,
     RuleCount,
     Scope,
     Size,
-    Step,
     Sufficient,
     When,
 )
@@ -23,11 +21,9 @@ from backtest.reporting.sentences import (
     about,
     by_how_much,
     how_often,
-    needs_person,
     six_sentences,
     unseen,
     when_they_fell,
-    why,
 )
 from tests.reference.invented_record import FIRM, SUBJECT, invented_record
 
@@ -50,25 +46,28 @@ HOW_OFTEN = {
         "Firm: losses exceeded the 99% VaR of HS-250 on 6 of 250 days (2.4%) on hypothetical P&L and on 7 of 250 days "
         "(2.8%) on actual P&L; 2.5 were to be expected. The count does not reject the level (p = 0.081 on "
         "hypothetical; "
-        "exact binomial). Evidence that the VaR is too low (p = 0.028 on actual; exact binomial). Rule basel-mar32: "
-        "count 7, amber, multiplier 1.83.",
+        "exact binomial, two-sided). Evidence that the VaR is too low (p = 0.028 on actual; exact binomial, "
+        "two-sided). Rule basel-mar32: count 7, amber, multiplier 1.83.",
     ),
     "no exception, a rule that counts a missing day": (
         Often(SCOPE, (count("hypothetical", 0, 0.162, False),), RuleCount("basel-mar32", 1, "green", None, "")),
         "Firm: losses exceeded the 99% VaR of HS-250 on none of 250 days on hypothetical P&L; 2.5 were to be expected. "
-        "The count does not reject the level (p = 0.16 on hypothetical; exact binomial). Rule basel-mar32: "
+        "The count does not reject the level (p = 0.16 on hypothetical; exact binomial, two-sided). Rule basel-mar32: "
         "count 1 (days "
         "without P&L or VaR count as exceptions), green.",
     ),
     "so few that the VaR is too high": (
         Often(SCOPE, (count("hypothetical", 0, 0.0012, True, 1000),), None),
         "Firm: losses exceeded the 99% VaR of HS-250 on none of 1,000 days on hypothetical P&L; 10.0 were to be "
-        "expected. So few are evidence that the VaR is too high (p = 0.0012 on hypothetical; exact binomial).",
+        "expected. So few are evidence that the VaR is too high (p = 0.0012 on hypothetical; exact binomial, "
+        "two-sided).",
     ),
     "a desk of 131 days": (
         Often(replace(SCOPE, desk="New desk", is_firm=False), (count("hypothetical", 2, 0.75, False, 131),), None),
-        "New desk: losses exceeded the 99% VaR of HS-250 on 2 of 131 days (1.5%) on hypothetical P&L; 1.3 were to be "
-        "expected. The count does not reject the level (p = 0.75 on hypothetical; exact binomial). Only 131 "
+        "New desk, of 3 desks the one whose count is furthest above its expectation: losses exceeded "
+        "the 99% VaR of HS-250 on 2 of 131 days (1.5%) on hypothetical P&L; 1.3 were to be "
+        "expected. The count does not reject the level (p = 0.75 on hypothetical; exact binomial, two-sided). "
+        "Only 131 "
         "of 250 days "
         "have both a P&L and a forecast: no zone.",
     ),
@@ -79,7 +78,7 @@ HOW_OFTEN = {
             RuleCount("basel-mar32", 1, "", None, "not tested: 131 of 250 business days, no zone"),
         ),
         "Firm: losses exceeded the 99% VaR of HS-250 on 1 of 131 days (0.76%) on hypothetical P&L; 1.3 were to be "
-        "expected. The count does not reject the level (p > 0.99 on hypothetical; exact binomial). Rule "
+        "expected. The count does not reject the level (p > 0.99 on hypothetical; exact binomial, two-sided). Rule "
         "basel-mar32: not "
         "tested: 131 of 250 business days, no zone. Only 131 of 250 days have both a P&L and a forecast.",
     ),
@@ -88,6 +87,31 @@ HOW_OFTEN = {
         "Firm: no reported VaR was supplied. In 250 days on hypothetical P&L losses exceeded the "
         "challengers' 99% VaR on "
         "this many days: historical 5, conditional-evt 3; 2.5 were to be expected.",
+    ),
+    "one day, a further level that rejects, a rule that was not applied": (
+        Often(
+            replace(SCOPE, wanted_days=None),
+            (count("hypothetical", 0, 1.0, False, 1),),
+            RuleCount("basel-mar32", None, "", None, "not applied, since no desk is named as the firm-wide row"),
+            (
+                Rejection("binomial", 0.975, "hypothetical", 0.025, "evidence that VaR is too low"),
+                Rejection("kupiec", 0.975, "actual", 0.0496, "evidence that VaR is too low"),
+            ),
+        ),
+        "Firm: losses exceeded the 99% VaR of HS-250 on none of 1 day on hypothetical P&L; 0.01 were to be expected. "
+        "The count does not reject the level (p > 0.99 on hypothetical; exact binomial, two-sided). Evidence that VaR "
+        "is too low (Exact binomial: 97.5% hypothetical p = 0.025; Kupiec, share of failures: 97.5% actual p = "
+        "0.0496). Rule basel-mar32: not applied, since no desk is named as the firm-wide row.",
+    ),
+    "a zone without multiplier": (
+        Often(
+            SCOPE,
+            (count("hypothetical", 6, 0.0814, False),),
+            RuleCount("basel-mar32", 6, "amber", None, "count on hypothetical only; the rule takes the larger"),
+        ),
+        "Firm: losses exceeded the 99% VaR of HS-250 on 6 of 250 days (2.4%) on hypothetical P&L; 2.5 were to be "
+        "expected. The count does not reject the level (p = 0.081 on hypothetical; exact binomial, two-sided). Rule "
+        "basel-mar32: count 6, amber, no multiplier (count on hypothetical only; the rule takes the larger).",
     ),
     "no count asked for": (
         Often(SCOPE, (), None),
@@ -102,13 +126,32 @@ def test_how_often(case):
     assert how_often(facts) == text
 
 
-REJECTED = When(SCOPE, 13, 250, 10, 49, "2025-03-03", "2025-05-08", 0.0496, True, "")
+REJECTED = When(SCOPE, 13, 250, 10, 49, 9 * 250 / 13 + 1, "2025-03-03", "2025-05-08", 0.0496, True, "")
 WHEN = {
     "clustered": (
         REJECTED,
         "10 of the 13 losses beyond the 97.5% VaR of HS-250 (hypothetical P&L, 250 days) fell within 49 business days, "
-        "2025-03-03 to 2025-05-08; evenly spread they would take about 192. Independence from one day to the next is "
-        "rejected (Christoffersen, p = 0.0496).",
+        "2025-03-03 to 2025-05-08; evenly spaced they would take about 174, by chance alone less. Independence from "
+        "one day to the next is rejected (Christoffersen, p = 0.0496).",
+    ),
+    "hardly closer than evenly spaced, further rejections": (
+        replace(
+            REJECTED,
+            width=140,
+            p=0.07,
+            rejected=False,
+            more=(
+                Rejection(
+                    "christoffersen-independence", 0.99, "actual", 0.02, "evidence that exceptions are clustered"
+                ),
+                Rejection("christoffersen-coverage", 0.975, "hypothetical", 0.03, "evidence that VaR is too low"),
+            ),
+        ),
+        "10 of the 13 losses beyond the 97.5% VaR of HS-250 (hypothetical P&L, 250 days) fell within 140 business "
+        "days, 2025-03-03 to 2025-05-08: not bunched. Independence from one day to the next is not rejected, which "
+        "does not show it (Christoffersen, p = 0.070). Evidence that exceptions are clustered (Christoffersen, "
+        "independence: 99% actual p = 0.020). Together with the count: evidence that VaR is too low (Christoffersen, "
+        "coverage: 97.5% hypothetical p = 0.030).",
     ),
     "few": (
         replace(REJECTED, exceptions=1, p=0.7, rejected=False),
@@ -130,27 +173,35 @@ def test_when(case):
     assert when_they_fell(facts) == text
 
 
-SHORT = Sufficient("VaR", 1.55, 1.03, 3.08, 2.1e6, "")
+SHORT = Sufficient("VaR", 1.55, 1.03, 3.08, 2.1e6, 250, "")
 HOW_MUCH = {
     "short": (
         Size(SCOPE, SHORT, None),
-        "The 97.5% VaR would have had to be 1.55 times as large (1.03 to 3.08), on average EUR 3.26 m "
-        "instead of EUR 2.10 "
-        "m, EUR 1.16 m more. Intervals are 95%, if days were independent.",
+        "The 97.5% VaR of HS-250 (hypothetical P&L, 250 days) would have had to be 1.55 times as large (1.03 to "
+        "3.08), on average EUR 3.26 m instead of EUR 2.10 m, EUR 1.16 m more. The VaR interval is 95%, if days were "
+        "independent.",
+    ),
+    "open, and holding the size reported": (
+        Size(SCOPE, replace(SHORT, low=0.9, high=None, average=None), None),
+        "The 97.5% VaR of HS-250 (hypothetical P&L, 250 days) would have had to be 1.55 times as large (at least "
+        "0.90; no upper limit at this length); the interval holds 1, the size reported. The VaR interval is 95%, if "
+        "days were independent.",
     ),
     "too large, with ES of an open interval": (
         Size(
             SCOPE,
             replace(SHORT, estimate=0.8, low=0.6, high=0.95),
-            Sufficient("ES", 1.1, 0.7, None, None, "no upper limit at this length"),
+            Sufficient("ES", 1.1, 0.7, 1.6, None, 249, "interval by bootstrap over days"),
+            (Rejection("acerbi-szekely-2", 0.975, "actual", 0.012, "evidence that VaR or ES is too low"),),
         ),
-        "The 97.5% VaR would have sufficed at 0.80 times its size (0.60 to 0.95), on average EUR 1.68 m instead of EUR "
-        "2.10 m, EUR 420 k less. The 97.5% ES would have had to be 1.10 times as large (at least 0.70; no "
-        "upper limit at "
-        "this length); the interval holds 1, the size reported. Intervals are 95%, if days were independent.",
+        "The 97.5% VaR of HS-250 (hypothetical P&L, 250 days) would have sufficed at 0.80 times its size (0.60 to "
+        "0.95), on average EUR 1.68 m instead of EUR 2.10 m, EUR 420 k less. The 97.5% ES (249 days) would have had to "
+        "be 1.10 times as large (0.70 to 1.60). The VaR interval is 95%, if days were independent. The ES interval is "
+        "a 95% bootstrap over days and too short with few losses beyond the VaR. Evidence that VaR or ES is too low "
+        "(Acerbi and Szekely, statistic 2: 97.5% actual p = 0.012).",
     ),
     "not tested": (
-        Size(SCOPE, Sufficient("VaR", None, None, None, None, "not tested: no day with VaR above 0"), None),
+        Size(SCOPE, Sufficient("VaR", None, None, None, None, 0, "not tested: no day with VaR above 0"), None),
         "The multiple of the 97.5% VaR that would have sufficed: not tested: no day with VaR above 0.",
     ),
 }
@@ -162,73 +213,16 @@ def test_by_how_much(case):
     assert by_how_much(facts) == text
 
 
-STEPS = (
-    Step("reported", "HS-250", 250, 28, 3.21e6, 2e4, "FZ0", None, None, None, ""),
-    Step("longer window", "historical", 1000, 21, 3.99e6, 1e4, "FZ0", -0.02, -0.08, 0.04, ""),
-    Step("plus filter", "filtered-historical", 1000, 19, 3.18e6, 2.4e5, "FZ0", -0.2, -0.3, -0.1, ""),
-    Step("plus tail", "conditional-evt", 1000, 20, 3.07e6, 2.4e5, "FZ0", 0.1, 0.02, 0.18, ""),
-)
-BRIDGE = Bridge(FIRM, 0.99, "hypothetical", "2018-01-02", "2025-12-31", 1860, "EUR", STEPS, "")
-
-
-def test_why_names_every_step_its_gain_and_its_price():
-    assert why(BRIDGE) == (
-        "Over 1,860 shared days at 99% (18.6 exceptions expected): reported 28 exceptions at an average VaR "
-        "of EUR 3.21 m; "
-        "longer window 21 at EUR 3.99 m; plus filter 19 at EUR 3.18 m; plus tail 20 at EUR 3.07 m. Step by step, score "
-        "better beyond chance: plus filter; score worse beyond chance: plus tail; cannot be told from no "
-        "change: longer "
-        "window. From day to day the last step's VaR moves 12 times as much as the first's."
-    )
-
-
-@pytest.mark.parametrize(
-    ("bridge", "text"),
-    [
-        (None, "The bridge was not built: none was asked for."),
-        (
-            replace(BRIDGE, level=None, steps=(), note="not tested: history"),
-            "The bridge was not built: not tested: history.",
-        ),
-    ],
-)
-def test_a_bridge_that_was_not_built_says_why(bridge, text):
-    assert why(bridge) == text
-
-
-def test_a_step_without_numbers_is_named_with_its_reason():
-    lacking = replace(STEPS[1], exceptions=None, note="not tested: history")
-    text = why(replace(BRIDGE, steps=(STEPS[0], lacking)))
-    assert text.endswith("at an average VaR of EUR 3.21 m. Not in it: longer window not tested: history.")
-
-
 def test_what_the_review_could_not_see():
-    assert unseen(Power(0.99, 0.01, 0.02, 250, 0.3779)) == (
+    assert unseen(Power(0.99, 0.01, 0.02, 250, 0.3779), True) == (
         "A 99% VaR whose true coverage is 98% is caught in 38 of 100 reviews of 250 days (one-sided exact "
         "binomial at 5%, "
-        "days independent). The ten-day stressed ES used for capital was not tested."
+        "days independent; the two-sided p of sentence 1 sees less). "
+        "The ten-day stressed ES used for capital was not tested."
     )
-    assert unseen(None) == (
+    assert "sentence 1" not in unseen(Power(0.99, 0.01, 0.02, 250, 0.3779), False)
+    assert unseen(None, True) == (
         "The power of the count was not computed. The ten-day stressed ES used for capital was not tested."
-    )
-
-
-def test_what_needs_a_person():
-    facts = Person(SCOPE, 2000, 6, 3, 17, "2025-01-02", ("New desk",), (("New desk", 131),))
-    assert needs_person(facts) == (
-        "6 of 2,000 forecasts fell back on a stated substitute; 3 data remarks to read; 17 desk-days with an exception "
-        "since 2025-01-02 to explain; without any challenger: New desk; judged on less than was asked for: "
-        "New desk (131 "
-        "of 250 days). The opinion is a person's to give; none is given here."
-    )
-
-
-def test_what_needs_a_person_where_nothing_is_open():
-    facts = Person(SCOPE, 2000, 0, 0, 0, "2025-01-02", (), ())
-    assert needs_person(facts) == (
-        "None of 2,000 forecasts fell back on a stated substitute; no data remarks to read; no desk-days "
-        "with an exception "
-        "since 2025-01-02 to explain. The opinion is a person's to give; none is given here."
     )
 
 

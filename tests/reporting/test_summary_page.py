@@ -248,8 +248,10 @@ def test_amounts_do_not_break_over_lines():
 
 def test_notes_are_said_once_and_name_the_levels_they_belong_to(view):
     firm = next(d for d in view.desks if d.name == FIRM)
+    bootstrap = "interval by bootstrap over days, too short with few losses beyond the VaR"
     assert firm.results[0].note == (
-        "Exact binomial: one-sided p in the record. McNeil and Frey, ES residuals: GPD shape 0.1 assumed."
+        "Exact binomial: one-sided p in the record. McNeil and Frey, ES residuals: GPD shape 0.1 assumed; "
+        f"{bootstrap}. sufficient multiple of ES: {bootstrap}."
     )
     assert firm.results[2].note == "The notes on these results stand in results.csv."
 
@@ -286,4 +288,4 @@ def test_the_index_answers_with_every_level_that_rejects(record, view):
     rows = summary_view(replace(record, results=table)).index.rows
     assert {r[-1] for r in rows} == {"evidence that VaR is too high (97.5%)"}
     table.loc[high, ["decision", "phrase"]] = ["not rejected", "unlike the level of counts"]
-    assert {r[-1] for r in summary_view(replace(record, results=table)).index.rows} == {"no evidence"}
+    assert {r[-1] for r in summary_view(replace(record, results=table)).index.rows} == {"no evidence (power 40 in 100)"}

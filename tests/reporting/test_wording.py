@@ -80,6 +80,7 @@ def test_a_level_reads_as_a_percentage(confidence, text):
         (25, 1001, "25 of 1,001 days (2.498%)"),
         (25, 1000, "25 of 1,000 days (2.5%)"),
         (0, 0, "0 days"),
+        (1, 1, "1 of 1 day (100%)"),
     ],
 )
 def test_a_rate_stands_beside_its_count(count, days, text):
@@ -156,6 +157,10 @@ def test_an_open_interval_says_so(low, high, text):
 )
 def test_power_as_cases_in_a_hundred(share, text):
     assert say.in_hundred(share) == text
+
+
+def test_a_power_beside_an_answer():
+    assert [say.power(p) for p in (0.598, 0.001, 0.999)] == ["60 in 100", "fewer than 1 in 100", "more than 99 in 100"]
 
 
 @pytest.mark.parametrize(
