@@ -133,7 +133,8 @@ def _usable(sample: Sample, *, sigma: bool) -> tuple[Sample, str, tuple[str, ...
 def _of_size(used: Sample, settings: Settings) -> Answer:
     """Return the effect size both tests share: the multiple of the ES that would have sufficed."""
     size = sufficient_es_multiple(used.losses, used.es, used.level, settings.seed)
-    direction = "losses beyond VaR call for more ES" if (size.estimate or 0.0) > 1.0 else "losses call for no more ES"
+    # Never "too high": the bootstrap's upper end is too low where few losses lie beyond the VaR.
+    direction = "ES too low" if size.low is not None and size.low > 1.0 else ""
     return Answer(
         used=used, estimate=size.estimate, low=size.low, high=size.high, direction=direction,
         notes=("size: the multiple of this ES that would have sufficed",),
