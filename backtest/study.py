@@ -45,19 +45,24 @@ class _Form(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True, strict=False)
 
 
-class Method(_Form):
-    """How the reported model works from a date on, in the model grammar, so that it can be performed again."""
+class _Pair(_Form):
+    """A filter and a tail with their options, as every block that describes a model writes them."""
 
-    since: dt.date = Field(alias="from")
     filter: str = "none"
     tail: str = "empirical"
-    window: int = Field(ge=50)
     decay: float | None = Field(default=None, gt=0, lt=1)
     mean: str | None = None
     innovations: str | None = None
     start: str | None = None
     age_decay: float | None = Field(default=None, gt=0, lt=1)
     tail_share: float | None = Field(default=None, gt=0, lt=0.5)
+
+
+class Method(_Pair):
+    """How the reported model works from a date on, in the model grammar, so that it can be performed again."""
+
+    since: dt.date = Field(alias="from")
+    window: int = Field(ge=50)
 
 
 class Review(_Form):
@@ -148,18 +153,10 @@ class Data(_Form):
         return self
 
 
-class ModelSettings(_Form):
+class ModelSettings(_Pair):
     """A pair of filter and tail, named by the user; names are resolved by the model grammar."""
 
     name: str = Field(min_length=1)
-    filter: str = "none"
-    tail: str = "empirical"
-    decay: float | None = Field(default=None, gt=0, lt=1)
-    mean: str | None = None
-    innovations: str | None = None
-    start: str | None = None
-    age_decay: float | None = Field(default=None, gt=0, lt=1)
-    tail_share: float | None = Field(default=None, gt=0, lt=0.5)
     gpd_fit: str | None = None
     window: int | None = Field(default=None, ge=50)
     recalibrate_days: int | None = Field(default=None, ge=1)
@@ -169,7 +166,7 @@ class Forecast(_Form):
     """Which challengers are run, on which past: P&L as it came, or (vectors) each day's positions under past moves.
 
     ``recalibrate_days``: the days on which parameters are estimated anew lie on a fixed grid, so that a later cut-off
-    moves none of them: weekdays are counted from a fixed date, every so manieth recalibrates, and so does the first of
+    moves none of them: weekdays are counted from a fixed date, every k-th recalibrates, and so does the first of
     each block of 256.
     """
 

@@ -1,7 +1,7 @@
 """The steps of the bridge for one desk: which forecasts stand between the reported VaR and the last challenger."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import date
 
 import numpy as np
@@ -134,9 +134,4 @@ def _label(model: Model, ready: Sequence[Model]) -> str:
 
 
 def _same(one: Model, other: Model) -> bool:
-    return (one.filter, one.tail, one.window, one.recalibrate_days) == (
-        other.filter,
-        other.tail,
-        other.window,
-        other.recalibrate_days,
-    )
+    return replace(one, name=other.name) == other

@@ -7,16 +7,10 @@ from backtest.errors import StudyError, near_miss
 
 @dataclass(frozen=True, slots=True)
 class Cited:
-    """A number of a rule with the paragraph it stands in; ``remembered`` where the paragraph was not re-read."""
+    """A number of a rule with the paragraph it stands in."""
 
     value: float
     paragraph: str
-    remembered: bool = False
-
-    @property
-    def citation(self) -> str:
-        """The paragraph, marked where it is from memory."""
-        return f"{self.paragraph} (from memory)" if self.remembered else self.paragraph
 
 
 @dataclass(frozen=True, slots=True)
