@@ -21,14 +21,16 @@ Days = npt.NDArray[np.datetime64]
 Mask = npt.NDArray[np.bool_]
 Span = int | Literal["all"]
 
-MEASURES = ("var", "es", "sigma", "shape")
+MEASURES = ("var", "es", "sigma", "shape", "pit")
+_COLUMNS = (*MEASURES[:-1], *(f"pit_{kind}" for kind in PNL_KINDS))
 
 
 @dataclass(frozen=True)
 class Sample:
     """Losses and forecasts of T days: ``dates`` datetime64[D], the others float64[T]; NaN where a measure is unknown.
 
-    Losses, VaR and ES are positive loss amounts; ``level`` is the confidence.
+    Losses, VaR and ES are positive loss amounts; ``level`` is the confidence; ``pit`` is that of the loss of this kind
+    of P&L, so that a large loss stands near 1.
     """
 
     desk: str
@@ -41,6 +43,7 @@ class Sample:
     es: Floats
     sigma: Floats
     shape: Floats
+    pit: Floats
 
     @property
     def days(self) -> int:
@@ -96,7 +99,8 @@ class Desk:
         days, measures = self.forecasts[(model, level)]
         dates, ours, theirs = np.intersect1d(self.dates, days, assume_unique=True, return_indices=True)
         losses = self.losses[kind][ours]
-        found = Sample(self.name, model, kind, level, dates, losses, *(measures[m][theirs] for m in MEASURES))
+        columns = (*MEASURES[:-1], f"pit_{kind}")
+        found = Sample(self.name, model, kind, level, dates, losses, *(measures[m][theirs] for m in columns))
         first, last = self._ends(span)
         return found.on((dates >= first) & (dates <= last) & ~np.isnan(losses) & ~np.isnan(found.var))
 
@@ -129,8 +133,8 @@ def read_book(
     """Align a P&L table and a forecasts table.
 
     pnl: one row a date x desk, ``date, desk, hypothetical`` and perhaps ``actual``, profit positive. forecasts: ``date,
-    desk, model, level, var`` and, where known, ``es, sigma, shape``; with a column ``horizon`` only one-day rows are
-    read. calendar: business days; without it each desk's own P&L days. as_of: cut-off; without it the last P&L day.
+    desk, model, level, var`` and, where known, ``es, sigma, shape, pit_hypothetical, pit_actual`` (``pit`` stands for
+    pit_hypothetical); with a column ``horizon`` only one-day rows are read. calendar: business days; without it each desk's own P&L days. as_of: cut-off; without it the last P&L day.
     Raises DataError where a column is missing, of the wrong type, infinite, or a row stands twice.
     """
     pnl, forecasts = _checked_pnl(pnl), _checked_forecasts(forecasts)
@@ -153,7 +157,7 @@ def _desk(name: str, pnl: pd.DataFrame, forecasts: pd.DataFrame, calendar: Days 
     for key, rows in forecasts.sort_values("date").groupby(["model", "level"], sort=True):
         model, level = cast(tuple[str, float], key)
         days = rows["date"].to_numpy().astype("datetime64[D]")
-        table[(str(model), float(level))] = days, {m: _measure(rows, m) for m in MEASURES}
+        table[(str(model), float(level))] = days, {m: _measure(rows, m) for m in _COLUMNS}
     return Desk(name, dates, losses, business[business <= cut], table)
 
 
@@ -174,13 +178,21 @@ def _checked_forecasts(forecasts: pd.DataFrame) -> pd.DataFrame:
         if len(forecasts) == 0:
             raise DataError("no one-day forecasts", place="forecasts table, column horizon", rule="horizon 1 is judged",
                             remedy="Hand over forecasts with horizon 1.")  # fmt: skip
-    forecasts = _numbers(forecasts, ["level", *(m for m in MEASURES if m in forecasts)], "forecasts table")
+    if "pit" in forecasts and "pit_hypothetical" not in forecasts:
+        forecasts = forecasts.rename(columns={"pit": "pit_hypothetical"})
+    forecasts = _numbers(forecasts, ["level", *(m for m in _COLUMNS if m in forecasts)], "forecasts table")
     wrong = forecasts[~((forecasts["level"] > 0.5) & (forecasts["level"] < 1.0))]
     if len(wrong):
         raise DataError("a level is not between 0.5 and 1", value=wrong["level"].iloc[0],
                         place=f"forecasts table, row {wrong.index[0]}, column level",
                         remedy="A level is a confidence such as 0.99, never 1 or 99.")  # fmt: skip
     _once(forecasts, ["date", "desk", "model", "level"], "forecasts table")
+    for column in (c for c in _COLUMNS if c.startswith("pit_") and c in forecasts):
+        outside = forecasts[(forecasts[column] < 0.0) | (forecasts[column] > 1.0)]
+        if len(outside):
+            raise DataError("a PIT is not between 0 and 1", value=outside[column].iloc[0],
+                            place=f"forecasts table, row {outside.index[0]}, column {column}",
+                            remedy="The PIT is the probability the forecast gave to a loss of at most this size.")  # fmt: skip
     return forecasts
 
 

@@ -25,7 +25,7 @@ def sample_of(losses: np.ndarray, var: object = 1.0, level: float = 0.99, **meas
         return np.broadcast_to(np.asarray(value, dtype=float), (days,)).copy()
 
     dates = business_days(max(days, 1))[:days].to_numpy().astype("datetime64[D]")
-    known = {name: full(measures.get(name, np.nan)) for name in ("es", "sigma", "shape")}
+    known = {name: full(measures.get(name, np.nan)) for name in ("es", "sigma", "shape", "pit")}
     return Sample("desk", "model", "hypothetical", level, dates, np.asarray(losses, dtype=float), full(var), **known)
 
 
@@ -43,7 +43,7 @@ def tables(
 ) -> tuple[pd.DataFrame, pd.DataFrame]:
     """Return P&L and forecasts of desks with given losses; the second model's VaR is a tenth larger, and so on.
 
-    ``measures``: var and, if given, es, sigma, shape, the same at every level, numbers or arrays.
+    ``measures``: var and, if given, es, sigma, shape, pit, the same at every level, numbers or arrays.
     """
     pnl, forecasts = [], []
     for desk, values in losses.items():
@@ -52,10 +52,7 @@ def tables(
         pnl.append(frame.assign(actual=-0.9 * values) if actual else frame)
         for place, model in enumerate(models):
             for level in levels:
-                scaled = {
-                    k: np.asarray(v, dtype=float) * (1 + 0.1 * place) for k, v in measures.items() if k != "shape"
-                }
-                if "shape" in measures:
-                    scaled["shape"] = np.asarray(measures["shape"], dtype=float)
+                given = {name: np.asarray(values, dtype=float) for name, values in measures.items()}
+                scaled = {k: v if k in ("shape", "pit") else v * (1 + 0.1 * place) for k, v in given.items()}
                 forecasts.append(pd.DataFrame({"date": dates, "desk": desk, "model": model, "level": level, **scaled}))
     return pd.concat(pnl, ignore_index=True), pd.concat(forecasts, ignore_index=True)

@@ -1,0 +1,65 @@
+"""Fit every window of three open series by arch, cold and warm, and store the optima in tests/data/arch_optima.parquet.
+
+Run as `python tests/reference/make_arch_optima.py` from the top of the repository: about an hour of one core, spread
+over the cores there are. Cold: arch's own starting values. Warm: started from the day before's warm optimum, the first
+window from its cold one. arch is handed gains, so that the extra term of its GJR acts on losses. Columns: series,
+model, window (number of its first loss), cold and warm log likelihood, persistence alpha + gamma/2 + beta, next-day
+sigma, arch's own flag (0 is success), and the releases of arch and numpy that found them.
+"""
+
+import sys
+from pathlib import Path
+
+sys.path.insert(0, str(Path(__file__).parent.parent.parent))
+
+import arch
+import numpy as np
+import pandas as pd
+from arch import arch_model
+from joblib import Parallel, delayed
+
+from tests.reference.datasets import DATA, bmw, dem2gbp, sp500
+
+WINDOW = 1000
+SERIES = {"sp500": lambda: sp500().to_numpy(), "bmw": lambda: bmw().to_numpy(), "dem2gbp": lambda: -dem2gbp()}
+CONSTANT, AR1 = {"mean": "Constant"}, {"mean": "AR", "lags": 1}
+MODELS = {
+    "C-GARCH-normal": {**CONSTANT, "o": 0},
+    "C-GARCH-t": {**CONSTANT, "o": 0, "dist": "t"},
+    "AR1-GJR-t": {**AR1, "o": 1, "dist": "t"},
+}
+
+
+def persistence(fit: object) -> float:
+    p = fit.params
+    return p["alpha[1]"] + p["beta[1]"] + p.get("gamma[1]", 0.0) / 2
+
+
+def found(fit: object) -> tuple[float, float, float, int]:
+    ahead = fit.forecast(horizon=1, reindex=False).variance.to_numpy()[-1, 0]
+    return fit.loglikelihood, persistence(fit), np.sqrt(ahead), fit.convergence_flag
+
+
+def optima(series: str, model: str) -> pd.DataFrame:
+    """Fit every window of one series by one model, cold and warm."""
+    losses, rows, yesterday = SERIES[series](), [], None
+    for i in range(len(losses) - WINDOW):
+        window = arch_model(-losses[i : i + WINDOW], vol="GARCH", p=1, q=1, rescale=False, **MODELS[model])
+        cold = window.fit(disp="off", show_warning=False)
+        warm = cold if yesterday is None else window.fit(starting_values=yesterday, disp="off", show_warning=False)
+        yesterday = warm.params.to_numpy()
+        rows.append((series, model, i, *found(cold), *found(warm)))
+    parts = [f"{way}_{what}" for way in ("cold", "warm") for what in ("loglik", "persistence", "sigma", "flag")]
+    return pd.DataFrame(rows, columns=["series", "model", "window", *parts])
+
+
+def main() -> None:
+    work = [(series, model) for model in reversed(MODELS) for series in SERIES]
+    tables = Parallel(n_jobs=-1, verbose=10)(delayed(optima)(*each) for each in work)
+    table = pd.concat(tables, ignore_index=True).sort_values(["series", "model", "window"], ignore_index=True)
+    table.attrs = {"arch": arch.__version__, "numpy": np.__version__, "window": WINDOW}
+    table.astype({"series": "category", "model": "category"}).to_parquet(DATA / "arch_optima.parquet")
+
+
+if __name__ == "__main__":
+    main()
