@@ -134,7 +134,8 @@ def read_book(
 
     pnl: one row a date x desk, ``date, desk, hypothetical`` and perhaps ``actual``, profit positive. forecasts: ``date,
     desk, model, level, var`` and, where known, ``es, sigma, shape, pit_hypothetical, pit_actual`` (``pit`` stands for
-    pit_hypothetical); with a column ``horizon`` only one-day rows are read. calendar: business days; without it each desk's own P&L days. as_of: cut-off; without it the last P&L day.
+    the first); with a column ``horizon`` only one-day rows are read. calendar: business days; without it each desk's
+    own P&L days. as_of: cut-off; without it the last P&L day.
     Raises DataError where a column is missing, of the wrong type, infinite, or a row stands twice.
     """
     pnl, forecasts = _checked_pnl(pnl), _checked_forecasts(forecasts)
@@ -192,7 +193,7 @@ def _checked_forecasts(forecasts: pd.DataFrame) -> pd.DataFrame:
         if len(outside):
             raise DataError("a PIT is not between 0 and 1", value=outside[column].iloc[0],
                             place=f"forecasts table, row {outside.index[0]}, column {column}",
-                            remedy="The PIT is the probability the forecast gave to a loss of at most this size.")  # fmt: skip
+                            remedy="The PIT is the forecast's probability of a loss of at most this size.")  # fmt: skip
     return forecasts
 
 
