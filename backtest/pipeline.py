@@ -44,7 +44,7 @@ from backtest.reporting.html import summary_html
 from backtest.reporting.lines import input_lines
 from backtest.reporting.sentences import six_sentences
 from backtest.reporting.show import day_view
-from backtest.study import Study
+from backtest.study_form import Study
 from backtest.values import whole
 from backtest.verbs import Progress, each, forecast_desks, refuse_reserved, silent
 

@@ -30,6 +30,9 @@ BRIDGE_COLUMNS = (
     "desk", "level", "pnl_kind", "step", "model", "window", "from", "to", "days", "exceptions", "average_var",
     "average_change", "score_name", "score", "score_change", "low", "high", "note",
 )  # fmt: skip
+CRITERIA_COLUMNS = (
+    "desk", "criterion", "limit", "level", "pnl_kind", "from", "to", "days", "value", "low", "high", "answer", "note",
+)  # fmt: skip
 REMARK_COLUMNS = ("rule", "source", "desk", "first", "last", "count", "text")
 
 REPORTED_STATUS = "as reported"

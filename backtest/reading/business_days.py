@@ -9,7 +9,7 @@ from backtest.reading.columns import refuse_missing
 from backtest.reading.remarks import iso
 from backtest.reading.tables import Table
 from backtest.records import Remark
-from backtest.study import Study
+from backtest.study_form import Study
 
 
 def read_calendar(table: Table) -> tuple[np.ndarray, set[str]]:

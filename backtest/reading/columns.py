@@ -4,7 +4,7 @@ from collections.abc import Sequence
 
 from backtest.errors import DataError, StudyError, near_miss
 from backtest.reading.tables import Table
-from backtest.study import Columns, Data, LevelColumn
+from backtest.study_form import Columns, Data, LevelColumn
 
 PNL_VALUES = ("hypothetical", "actual", "risk_theoretical", "risk_theoretical_aligned")
 PNL_KEYS = ("date", "desk", *PNL_VALUES, "currency", "known_on", "flag")

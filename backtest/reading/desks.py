@@ -10,7 +10,7 @@ from backtest.reading.cells import choices, dates, names, refuse, refuse_first
 from backtest.reading.columns import refuse_missing
 from backtest.reading.tables import Table, place_of
 from backtest.records import DATE_DTYPE, Remark
-from backtest.study import Study
+from backtest.study_form import Study
 
 DESK_COLUMNS = ("desk", "parent", "valid_from", "valid_to", "scope", "currency", "kind")
 CHANGE_COLUMNS = ("date", "desk", "kind", "note")

@@ -18,7 +18,7 @@ from backtest.reading.draft_text import Line, render
 from backtest.reading.history import known_before_last
 from backtest.reading.pnl import read_pnl
 from backtest.reading.reported import DEFAULT_MODEL, empty_reported, read_reported
-from backtest.study import Study
+from backtest.study_form import Study
 
 SIDE_ROLES = ("desks", "changes", "calendar")
 WINDOWS = (1000, 500, 250, 100, 50)

@@ -8,7 +8,7 @@ import pandas as pd
 from backtest.errors import DataError
 from backtest.reading.remarks import desk_remark
 from backtest.records import PNL_KINDS, VECTORS, DeskVectors, Remark, latest_known
-from backtest.study import Study
+from backtest.study_form import Study
 
 YEAR = 250
 """Days of one regulatory year (MAR32.4: 12 months, 250 days): below it no zone is given."""

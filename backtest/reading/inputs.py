@@ -38,7 +38,7 @@ from backtest.reading.totals import not_adding_up
 from backtest.reading.vector_days import on_target_days, refuse_without_vectors, vector_remarks
 from backtest.reading.vectors import VECTOR_COLUMNS, read_vectors
 from backtest.records import DeskVectors, Inputs, Remark, latest_known
-from backtest.study import Study
+from backtest.study_form import Study
 
 ROLES = ("pnl", "reported", "desks", "changes", "calendar", "vectors", "factors", "exposures")
 ROWS = {"pnl": "P&L rows", "reported": "reported forecasts", "changes": "changes"}

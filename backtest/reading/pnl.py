@@ -7,7 +7,7 @@ from backtest.errors import DataError
 from backtest.reading.cells import choices, dates, names, numbers, refuse_first
 from backtest.reading.columns import PNL_KEYS, PNL_VALUES, find
 from backtest.reading.tables import Table, place_of
-from backtest.study import Data
+from backtest.study_form import Data
 
 FLAGS = ("filled", "replaced", "late")
 

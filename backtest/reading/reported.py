@@ -12,7 +12,7 @@ from backtest.reading.pnl import known_on, refuse_repeated
 from backtest.reading.remarks import per_desk
 from backtest.reading.tables import Table
 from backtest.records import DATE_DTYPE, Remark
-from backtest.study import Columns, Study
+from backtest.study_form import Columns, Study
 
 COLUMNS = ("date", "desk", "model", "level", "var", "es", "sigma", "pit")
 DEFAULT_MODEL = "reported"

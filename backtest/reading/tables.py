@@ -12,7 +12,7 @@ from backtest.errors import DataError, near_miss
 from backtest.reading.csv_text import parse_text
 from backtest.reading.parquet import parse_parquet
 from backtest.records import Source
-from backtest.study import Data
+from backtest.study_form import Data
 
 PARQUET_SUFFIXES = (".parquet", ".pq")
 SPREADSHEET_SUFFIXES = (".xls", ".xlsx", ".xlsm", ".ods")

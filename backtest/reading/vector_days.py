@@ -10,7 +10,7 @@ from backtest.reading.desks import lives
 from backtest.reading.history import windows_needed
 from backtest.reading.remarks import desk_remark, per_desk
 from backtest.records import VECTORS, DeskVectors, Inputs, Remark
-from backtest.study import Study
+from backtest.study_form import Study
 
 
 def refuse_without_vectors(study: Study) -> None:

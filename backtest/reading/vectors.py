@@ -15,7 +15,7 @@ from backtest.reading.cells import coded_names, dates, numbers, refuse_first
 from backtest.reading.columns import refuse_missing
 from backtest.reading.tables import Table
 from backtest.records import DeskVectors
-from backtest.study import Data
+from backtest.study_form import Data
 
 VECTOR_COLUMNS = ("date", "desk", "scenario", "pnl")
 

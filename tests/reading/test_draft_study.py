@@ -12,7 +12,8 @@ from backtest.reading.draft import draft_study
 from backtest.reading.draft_names import pnl_kind, risk_column
 from backtest.reading.inputs import read_inputs
 from backtest.records import Inputs
-from backtest.study import Study, read_study
+from backtest.study import read_study
+from backtest.study_form import Study
 from tests.reference.invented_extract import invented, pnl_text, reported_text
 
 DESKS = ("Lumber", "Wool", "Amber")

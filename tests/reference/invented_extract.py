@@ -7,7 +7,8 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
-from backtest.study import Study, read_study
+from backtest.study import read_study
+from backtest.study_form import Study
 
 
 def business_days(n: int, first: str = "2022-01-03") -> list[dt.date]:
