@@ -9,12 +9,17 @@ Tail, in residual units, by the kind of the tail:
   count as 1/sum of squared weights days.
 - normal, t, skewed t: see ``law_bands``; where that has no answer (a shape at its bound), the empirical width.
 
-Filter: variance of the next mean and sigma and their covariance, as ``Filtered.uncertainty``. Errors of filter and tail
-are taken as independent: half-widths add in squares, on each side (Zou & Donner 2008, from memory).
+Filter: variance of the next mean and sigma and their covariance, as ``Filtered.uncertainty``: by the sandwich for
+Gaussian quasi likelihood, which holds on fat-tailed losses; by the inverse Hessian for t and skewed t innovations,
+which holds where that law is the true one (``kernels/precision.py``); none for EWMA, whose decay is stated, nor for
+library processes. Errors of filter and tail are taken as independent: half-widths add in squares, on each side (Zou &
+Donner 2008, from memory).
 
 Intervals are somewhat short: on 1,000 independent t4 losses with 100 excesses, those for VaR at 99% cover about 92% and
 those for ES at 97.5% about 87.5% of the time. Those of an empirical ES cover 90% there (97.5%) and 87% (99%), but only
-83% and 68% on 250 losses, where 2.5 lie beyond the 99% quantile.
+83% and 68% on 250 losses, where 2.5 lie beyond the 99% quantile. Those for the next sigma of a GARCH with t5
+innovations fitted by Gaussian quasi likelihood cover about 91% on 1,000 losses and 95% on 5,000, where those by the
+inverse Hessian would cover 75%.
 """
 
 from dataclasses import dataclass

@@ -65,12 +65,17 @@ def _ewma(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.nda
     return Filtered(np.zeros(len(pasts)), sigma, residuals, status, {}, "normal")
 
 
-def _garch(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.ndarray) -> Filtered:
-    shapes = INNOVATIONS.index(spec.innovations)
-    member = garch.member(
-        MEANS.index(spec.mean), STARTS.index(spec.start), gjr=spec.kind == "gjr", shapes=shapes,
-        every_start=spec.every_start,
+def member_of(spec: FilterSpec) -> rolling.Member:
+    """Return the member of the GARCH family that a filter of kind garch or gjr asks for."""
+    return garch.member(
+        MEANS.index(spec.mean), STARTS.index(spec.start), gjr=spec.kind == "gjr",
+        shapes=INNOVATIONS.index(spec.innovations), every_start=spec.every_start,
     )  # fmt: skip
+
+
+def _garch(pasts: np.ndarray, spec: FilterSpec, places: np.ndarray, refit: np.ndarray) -> Filtered:
+    member = member_of(spec)
+    shapes = member.shapes
     found = garch.roll(pasts, places, refit, member, uncertain=True)
     unused = np.setdiff1d(np.arange(found.parameters.shape[1]), member.free)
     found.parameters[:, unused] = np.nan

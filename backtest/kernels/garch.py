@@ -23,7 +23,7 @@ from backtest.kernels.parameters import (
     C,
 )  # fmt: skip
 from backtest.kernels.past import new_pasts
-from backtest.kernels.precision import curvature_rows, next_day_spread
+from backtest.kernels.precision import evidence, next_day_spread
 from backtest.kernels.rolling import (
     CONSTANT,
     FOUND,
@@ -49,8 +49,8 @@ class Rolled(NamedTuple):
 
     parameters (n, COUNT), NaN where a past was not filtered by them; loglik (n), NaN where not fitted that day;
     second_sigma (n) of a second optimum, NaN where there is none; mean, sigma (n) of the next day; status bits (n);
-    residuals (n, W - skip); uncertainty (n, 3): variances of next mean and next sigma and their covariance, zero where
-    not fitted or not asked for.
+    residuals (n, W - skip); uncertainty (n, 3): variances of next mean and next sigma and their covariance, as
+    ``precision.next_day_spread``, zero where not fitted or not asked for.
     """
 
     parameters: np.ndarray
@@ -96,12 +96,10 @@ def roll(
     stand_in(pasts, chosen.skip, status, ahead, residuals)
     unused = status & (CONSTANT | AS_EWMA) > 0
     uncertainty = np.zeros((n, 3))
-    if uncertain and filtered.size:
-        curvature, slopes = np.zeros((n, COUNT * COUNT)), np.ones((n, COUNT + 3))
-        curvature_rows(pasts, filtered, found, lanes, work, chosen, curvature, slopes, *chosen_law)
-        ahead_of = filtered[ahead[filtered, 1] > 0.0]
-        parts = (curvature[ahead_of], slopes[ahead_of], found[ahead_of, :COUNT])
-        uncertainty[ahead_of] = next_day_spread(*parts, chosen.free, chosen.cap)
+    ahead_of = filtered[ahead[filtered, 1] > 0.0] if uncertain else filtered[:0]
+    if ahead_of.size:
+        said = evidence(pasts, ahead_of, found, chosen)
+        uncertainty[ahead_of] = next_day_spread(*said, found[ahead_of, :COUNT], chosen)
     found[unused, :COUNT] = np.nan
     parameters, loglik, second = found[:, :COUNT], found[:, LOGLIK], found[:, SECOND_SIGMA]
     return Rolled(parameters, loglik, second, ahead[:, 0], ahead[:, 1], status, residuals, uncertainty)

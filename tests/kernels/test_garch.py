@@ -184,16 +184,6 @@ def test_full_sample_likelihoods_of_the_family(gjr, shapes, value):
         assert found.parameters[0, P.LAMBDA] == pytest.approx(0.1278, abs=0.001)  # of losses
 
 
-# Standard errors from the Hessian of the DEM/GBP benchmark: TSP file bgfcp, mu, omega, alpha, beta.
-def test_the_uncertainty_of_the_next_mean_is_the_benchmarks_hessian_standard_error():
-    x = dem2gbp()
-    found = garch.roll(
-        np.ascontiguousarray(x[None, :]), np.zeros(1, np.int64), np.ones(1, bool),
-        garch.member(P.CONSTANT_MEAN, P.MEAN_SQUARE), uncertain=True,
-    )  # fmt: skip
-    assert np.sqrt(found.uncertainty[0, 0]) == pytest.approx(0.00846212, rel=1e-4)
-
-
 def test_the_uncertainty_of_the_next_sigma_is_what_simulated_fits_show():
     """Oracle: across samples of a known Gaussian process, sigma's error at the true path has this variance."""
     from tests.reference.datasets import garch_t

@@ -23,14 +23,23 @@ def log_density(z, law, eta, lam):
 
 def log_likelihood(theta, losses, start, fixed=None, skip=0, law="normal"):
     """Log-likelihood; start: fixed, mean-square or unconditional."""
-    c, phi, omega, alpha, gamma, beta, eta, lam = theta
+    eta, lam = theta[6:]
+    return sum(
+        log_density(e / np.sqrt(h), law, eta, lam) - 0.5 * np.log(h)
+        for e, h in filtered(theta, losses, start, fixed, skip)
+    )
+
+
+def filtered(theta, losses, start, fixed=None, skip=0):
+    """Residual and its variance, day by day; start as of ``log_likelihood``."""
+    c, phi, omega, alpha, gamma, beta = theta[:6]
     x = np.asarray(losses, dtype=float)
     lag = np.concatenate([[0.0], x[:-1]])
     e = (x - c - phi * lag)[skip:]
     persistence = alpha + gamma / 2 + beta
     before = {"fixed": fixed, "mean-square": np.mean(e * e), "unconditional": omega / (1 - persistence)}[start]
-    h, total = omega + persistence * before, 0.0
-    for t in range(len(e)):
-        total += log_density(e[t] / np.sqrt(h), law, eta, lam) - 0.5 * np.log(h)
-        h = omega + (alpha + gamma * (e[t].real > 0)) * e[t] * e[t] + beta * h
-    return total
+    h, days = omega + persistence * before, []
+    for value in e:
+        days.append((value, h))
+        h = omega + (alpha + gamma * (value.real > 0)) * value * value + beta * h
+    return days
