@@ -57,7 +57,8 @@ def parameter_errors(past: np.ndarray, spec: FilterSpec) -> tuple[ParameterError
     row, pasts = np.zeros(1, dtype=np.int64), losses[None]
     found = garch.roll(pasts, row, np.ones(1, dtype=bool), member)
     if found.status[0] & (rolling.CONSTANT | garch.AS_EWMA):
-        raise FitError("past that cannot be fitted", value=words(found.status, FITTED_WORDS)[0], remedy="take another")
+        seen = words(found.status, FITTED_WORDS)[0]
+        raise FitError("past that cannot be fitted", value=seen, remedy="hand over losses that vary, or more of them")
     parameters = np.ascontiguousarray(found.parameters)
     matrices, slopes = evidence(pasts, row, parameters, member)
     fixed = held(parameters, member.cap)[:, member.free]
