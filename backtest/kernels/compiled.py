@@ -77,12 +77,20 @@ def is_warm() -> bool:
 
 def compiled(function: Function) -> Function:
     """Compile a kernel on first use (nopython, without the interpreter lock), cached where a folder is writable."""
-    return _jit(function, {})
+    return _jit(function, {"no_cfunc_wrapper": True})
+
+
+def in_place(function: Function) -> Function:
+    """Compile a kernel that only writes into what it is handed: no new array, no array returned.
+
+    References to arrays are then not counted: an atomic operation each, and code to compile around it.
+    """
+    return _jit(function, {"_nrt": False, "no_cfunc_wrapper": True})
 
 
 def inner(function: Function) -> Function:
-    """Compile a kernel that only kernels call, without a door from Python: the door takes as long as the code."""
-    return _jit(function, {"no_cpython_wrapper": True, "no_cfunc_wrapper": True})
+    """Compile a kernel that only kernels call, ``in_place``, without the door from Python, which costs as much."""
+    return _jit(function, {"_nrt": False, "no_cpython_wrapper": True, "no_cfunc_wrapper": True})
 
 
 def _jit(function: Function, options: dict[str, bool]) -> Function:

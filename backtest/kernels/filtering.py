@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled, inner
+from backtest.kernels.compiled import in_place, inner
 from backtest.kernels.lanes import WIDTH, load, spread, square_root, store, where_positive
 from backtest.kernels.parameters import ALPHA, BETA, COUNT, GAMMA, OMEGA, PHI, C
 from backtest.kernels.past import FIXED, SCALE, Pasts, prepare
@@ -29,7 +29,7 @@ def filter_lanes(p: np.ndarray, x: np.ndarray, skip: int, residuals: np.ndarray)
     store(p, AFTER, h)
 
 
-@compiled
+@in_place
 def filter_rows(
     values: np.ndarray, chosen: np.ndarray, parameters: np.ndarray, pasts: Pasts, p: np.ndarray, pad: np.ndarray,
     member: Member, residuals: np.ndarray, ahead: np.ndarray,
@@ -52,8 +52,7 @@ def filter_rows(
             for i in range(COUNT):
                 unit = 1.0 / scale if i == C else (1.0 / (scale * scale) if i == OMEGA else 1.0)
                 p[THETA + i, lane] = parameters[row, i] * unit
-            fixed, moments = pasts.facts[lane, FIXED], pasts.facts[lane]
-            p[AFTER, lane] = first_variance(p, lane, member.start, fixed, moments)
+            p[AFTER, lane] = first_variance(p, lane, member.start, pasts.facts[lane, FIXED], pasts.facts)
         filter_lanes(p, pasts.x, skip, pad)
         for lane in range(lanes):
             row, scale = chosen[base + lane], pasts.facts[lane, SCALE]

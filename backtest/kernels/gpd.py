@@ -8,7 +8,7 @@ import math
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled
+from backtest.kernels.compiled import compiled, in_place
 from backtest.kernels.order import kth_largest, sort_ascending
 
 LOWEST_SHAPE, HIGHEST_SHAPE = -0.5, 0.95
@@ -22,8 +22,8 @@ FITTED, ZHANG_STEPHENS, FEW_EXCESSES, REFUSED = 0, 1, 2, 4
 _NEAR_ZERO, _LARGE, _SMALL = 0.02, 1e150, 1e-150
 
 
-@compiled
-def slope(y: np.ndarray, theta: float, moments: np.ndarray) -> tuple[float, float, float]:
+@in_place
+def slope(y: np.ndarray, theta: float, moments: tuple[float, float, float]) -> tuple[float, float, float]:
     """Return first and second derivative of the mean profile log-likelihood at ``theta``, and xi there.
 
     ``moments`` (3): the means of y, y^2, y^3. The logarithm is taken of products; near theta = 0 of D = product - 1,
@@ -57,8 +57,8 @@ def slope(y: np.ndarray, theta: float, moments: np.ndarray) -> tuple[float, floa
     return 1.0 / theta - ratio - s1, s2 / s0 + ratio * ratio - 1.0 / (theta * theta) + s2, s0
 
 
-@compiled
-def bracket(y: np.ndarray, guess: float, moments: np.ndarray, top: float) -> tuple[float, float, float]:
+@in_place
+def bracket(y: np.ndarray, guess: float, moments: tuple[float, float, float], top: float) -> tuple[float, float, float]:
     """Return an interval of theta that holds a maximum of the profile likelihood, and where to begin in it.
 
     It lies on the side of zero to which the likelihood rises. NaN where there is none: it is below zero then, and the
@@ -78,20 +78,19 @@ def bracket(y: np.ndarray, guess: float, moments: np.ndarray, top: float) -> tup
     return np.nan, np.nan, np.nan
 
 
-@compiled
+@in_place
 def fit_ml(y: np.ndarray, guess: float) -> tuple[float, float, float]:
     """Return xi, beta and theta by maximum likelihood; NaN where no maximum with xi > -0.5 exists.
 
     ``y`` (n) are positive excesses, ``guess`` a first theta or NaN. Newton on the profile, kept in a bracket; without
     a guess it begins at the estimate by moments.
     """
-    moments, top = np.zeros(3), 0.0
+    m1, m2, m3, top = 0.0, 0.0, 0.0, 0.0
     for i in range(y.size):
         square = y[i] * y[i]
-        moments[0], moments[1], moments[2] = moments[0] + y[i], moments[1] + square, moments[2] + square * y[i]
+        m1, m2, m3 = m1 + y[i], m2 + square, m3 + square * y[i]
         top = max(top, y[i])
-    for i in range(3):
-        moments[i] /= y.size
+    moments = m1 / y.size, m2 / y.size, m3 / y.size
     low, high, theta = bracket(y, guess, moments, top)
     if math.isnan(low):
         return np.nan, np.nan, np.nan
@@ -115,7 +114,7 @@ def fit_ml(y: np.ndarray, guess: float) -> tuple[float, float, float]:
     return xi, moments[0] if abs(theta) * moments[0] < 1e-9 else xi / theta, theta
 
 
-@compiled
+@in_place
 def mean_log(y: np.ndarray, theta: float) -> float:
     """Return the mean of log(1 + theta y): the logarithm of products, kept as product - 1 for the digits near zero."""
     total, excess = 0.0, 0.0
@@ -127,7 +126,7 @@ def mean_log(y: np.ndarray, theta: float) -> float:
     return (total + math.log1p(excess)) / y.size
 
 
-@compiled
+@in_place
 def fit_zhang_stephens(y: np.ndarray) -> tuple[float, float]:
     """Return xi and beta by Zhang & Stephens (2009, Technometrics 51:316-325): never fails on positive excesses.
 
@@ -136,23 +135,25 @@ def fit_zhang_stephens(y: np.ndarray) -> tuple[float, float]:
     sort_ascending(y)
     n = y.size
     quartile, m = y[max(int(n / 4.0 + 0.5), 1) - 1], 20 + int(math.sqrt(n))
-    theta, value, best = np.empty(m), np.empty(m), -np.inf
+    best, total, weighted = -np.inf, 0.0, 0.0
     for j in range(m):
-        theta[j] = 1.0 / y[n - 1] + (1.0 - math.sqrt(m / (j + 0.5))) / (3.0 * quartile)
-        k = -mean_log(y, -theta[j])
-        value[j] = n * (math.log(theta[j] / k) + k - 1.0) if abs(theta[j]) > 1e-300 else -np.inf
-        best = max(best, value[j])
-    total, weighted = 0.0, 0.0
-    for j in range(m):
-        weight = math.exp(value[j] - best)
+        theta = 1.0 / y[n - 1] + (1.0 - math.sqrt(m / (j + 0.5))) / (3.0 * quartile)
+        if not abs(theta) > 1e-300:
+            continue
+        k = -mean_log(y, -theta)
+        value = n * (math.log(theta / k) + k - 1.0)
+        if value > best:
+            fade = math.exp(best - value)
+            best, total, weighted = value, total * fade, weighted * fade
+        weight = math.exp(value - best)
         total += weight
-        weighted += weight * theta[j]
+        weighted += weight * theta
     mean = weighted / total
     xi = mean_log(y, -mean)
     return xi, -xi / mean
 
 
-@compiled
+@in_place
 def fit_pwm(y: np.ndarray) -> tuple[float, float]:
     """Return xi and beta by probability-weighted moments (Hosking & Wallis 1987, Technometrics 29:339-349).
 
@@ -169,7 +170,7 @@ def fit_pwm(y: np.ndarray) -> tuple[float, float]:
     return xi, beta
 
 
-@compiled
+@in_place
 def quantile_and_shortfall(threshold: float, xi: float, beta: float, ratio: float) -> tuple[float, float]:
     """Return quantile and shortfall where the exceedance probability is ``ratio`` of that of the threshold.
 
@@ -181,9 +182,9 @@ def quantile_and_shortfall(threshold: float, xi: float, beta: float, ratio: floa
     return quantile, np.inf if xi >= 1.0 else quantile + (beta + xi * beta * g) / (1.0 - xi)
 
 
-@compiled
-def excesses(sample: np.ndarray, k: int, bound: float, work: np.ndarray) -> tuple[float, np.ndarray]:
-    """Return the (k+1)-th largest value and the strict excesses over it, in the order of the sample.
+@in_place
+def excesses(sample: np.ndarray, k: int, bound: float, work: np.ndarray) -> tuple[float, int]:
+    """Return the (k+1)-th largest value and how many excesses are strictly over it; they open the second row of work.
 
     ``bound`` is a guess below that value or NaN: it saves time and changes nothing. ``work`` (2, m) is overwritten.
     """
@@ -201,10 +202,10 @@ def excesses(sample: np.ndarray, k: int, bound: float, work: np.ndarray) -> tupl
     for i in range(count):
         moved[n] = kept[i] - threshold
         n += kept[i] > threshold
-    return threshold, moved[:n]
+    return threshold, n
 
 
-@compiled
+@in_place
 def fit(y: np.ndarray, by: int, guess: float) -> tuple[float, float, float, int]:
     """Return xi, beta, theta (NaN unless by likelihood), status: Zhang-Stephens where the estimator has no answer."""
     status = FEW_EXCESSES if y.size < FEW else FITTED
@@ -238,7 +239,8 @@ def roll_gpd(
     for i in range(n):
         if i == 0 or places[i] // run_days != places[i - 1] // run_days:
             guess = np.nan
-        threshold, y = excesses(samples[i], k, bound, work)
+        threshold, count = excesses(samples[i], k, bound, work)
+        y = work[1, :count]
         share, xi, beta = y.size / m, np.nan, np.nan
         status[i] = REFUSED
         if y.size >= FEWEST and widest < share:

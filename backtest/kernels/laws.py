@@ -6,6 +6,7 @@ B = a / (1 -+ lambda), on either side of z = -a / b, with K = log c + log b.
 """
 
 import math
+from typing import Any
 
 import numpy as np
 
@@ -15,7 +16,8 @@ from backtest.kernels.student import log_constant
 KAPPA, M, K = 0, 3, 6  # each with its first and second derivative by eta
 K_L, K_LL, K_LE, TURN = 9, 10, 11, 12
 SIDE = (13, 25)  # left and right of the turn: A and B, each with derivatives by lambda, eta, ll, le, ee
-CONSTANTS = 37
+LOG_B = 37  # with the same derivatives
+CONSTANTS = 43
 
 _STEP = 1e-4
 
@@ -37,7 +39,7 @@ def skew_shape(eta: float, lam: float) -> tuple[float, float]:
 
 
 @inner
-def set_constants(out: np.ndarray, row: int, lane: int, eta: float, lam: float, skew: bool) -> None:
+def set_constants(out: np.ndarray, row: int, lane: int, eta: float, lam: float, skew: Any) -> None:
     """Fill column ``lane`` of ``out`` (rows, lanes), from ``row`` on, with the law's constants at eta and lambda."""
     spare = 1.0 / (1.0 - 2.0 * eta)
     out[row + KAPPA, lane], out[row + KAPPA + 1, lane], out[row + KAPPA + 2, lane] = (
@@ -51,7 +53,7 @@ def set_constants(out: np.ndarray, row: int, lane: int, eta: float, lam: float, 
         1.0 / eta**3,
     )
     out[row + K, lane], out[row + K + 1, lane], out[row + K + 2, lane] = log_scale(eta)
-    if skew:
+    if skew is not None:
         _set_skew(out, row, lane, eta, lam)
 
 
@@ -61,33 +63,41 @@ def _set_skew(out: np.ndarray, row: int, lane: int, eta: float, lam: float) -> N
 
     Exact enough to reach the optimum, which the value alone decides.
     """
-    d = _STEP
-    grid = np.empty((5, 3, 3))
-    for i in range(3):
-        for j in range(3):
-            e, s = eta + (i - 1) * d, lam + (j - 1) * d
-            a, b = skew_shape(e, s)
-            grid[0, i, j], grid[1, i, j], grid[2, i, j] = b / (1.0 - s), a / (1.0 - s), b / (1.0 + s)
-            grid[3, i, j], grid[4, i, j] = a / (1.0 + s), math.log(b)
-    for n in range(4):
-        _differences(grid[n], d, row + SIDE[n // 2] + 6 * (n % 2), lane, out)
-    at = grid[4]
-    out[row + K, lane] += at[1, 1]
-    out[row + K + 1, lane] += (at[2, 1] - at[0, 1]) / (2 * d)
-    out[row + K + 2, lane] += (at[2, 1] - 2 * at[1, 1] + at[0, 1]) / (d * d)
-    out[row + K_L, lane] = (at[1, 2] - at[1, 0]) / (2 * d)
-    out[row + K_LL, lane] = (at[1, 2] - 2 * at[1, 1] + at[1, 0]) / (d * d)
-    out[row + K_LE, lane] = (at[2, 2] - at[2, 0] - at[0, 2] + at[0, 0]) / (4 * d * d)
+    for k in range(SIDE[0], CONSTANTS):
+        out[row + k, lane] = 0.0
+    for i in range(-1, 2):
+        for j in range(-1, 2):
+            s = lam + j * _STEP
+            a, b = skew_shape(eta + i * _STEP, s)
+            _add_point(out, row + SIDE[0], lane, i, j, b / (1.0 - s))
+            _add_point(out, row + SIDE[0] + 6, lane, i, j, a / (1.0 - s))
+            _add_point(out, row + SIDE[1], lane, i, j, b / (1.0 + s))
+            _add_point(out, row + SIDE[1] + 6, lane, i, j, a / (1.0 + s))
+            _add_point(out, row + LOG_B, lane, i, j, math.log(b))
+    for k in range(SIDE[0], CONSTANTS, 6):
+        for n in range(1, 6):
+            out[row + k + n, lane] /= (2.0 * _STEP) if n < 3 else (_STEP * _STEP * (4.0 if n == 4 else 1.0))
+    at = row + LOG_B
+    out[row + K, lane] += out[at, lane]
+    out[row + K + 1, lane] += out[at + 2, lane]
+    out[row + K + 2, lane] += out[at + 5, lane]
+    out[row + K_L, lane], out[row + K_LL, lane], out[row + K_LE, lane] = (
+        out[at + 1, lane],
+        out[at + 3, lane],
+        out[at + 4, lane],
+    )
     a, b = skew_shape(eta, lam)
     out[row + TURN, lane] = -a / b
 
 
 @inner
-def _differences(at: np.ndarray, d: float, row: int, lane: int, out: np.ndarray) -> None:
-    """Write value, derivatives by lambda, eta, and second derivatives ll, le, ee, from a 3 x 3 grid (eta, lambda)."""
-    out[row, lane] = at[1, 1]
-    out[row + 1, lane] = (at[1, 2] - at[1, 0]) / (2 * d)
-    out[row + 2, lane] = (at[2, 1] - at[0, 1]) / (2 * d)
-    out[row + 3, lane] = (at[1, 2] - 2 * at[1, 1] + at[1, 0]) / (d * d)
-    out[row + 4, lane] = (at[2, 2] - at[2, 0] - at[0, 2] + at[0, 0]) / (4 * d * d)
-    out[row + 5, lane] = (at[2, 1] - 2 * at[1, 1] + at[0, 1]) / (d * d)
+def _add_point(out: np.ndarray, row: int, lane: int, i: int, j: int, value: float) -> None:
+    """Add a point of a 3 x 3 grid (eta: i, lambda: j) to value and differences by lambda, eta, twice: ll, le, ee."""
+    if i == 0:
+        out[row, lane] += value if j == 0 else 0.0
+        out[row + 1, lane] += j * value
+        out[row + 3, lane] += (3 * j * j - 2) * value
+    if j == 0:
+        out[row + 2, lane] += i * value
+        out[row + 5, lane] += (3 * i * i - 2) * value
+    out[row + 4, lane] += i * j * value

@@ -10,26 +10,26 @@ from typing import Any
 import numpy as np
 
 from backtest.kernels import passes
-from backtest.kernels.compiled import compiled
+from backtest.kernels.compiled import in_place
 from backtest.kernels.laws import set_constants
 from backtest.kernels.parameters import BETA, COUNT, ETA, LAMBDA
 from backtest.kernels.start import first_curvature, first_variance
 from backtest.kernels.terms import AFTER, DD, LAW, THETA, VALUE
 
 
-@compiled
-def begin(p: np.ndarray, lane: int, start: int, fixed: float, moments: np.ndarray, shapes: int) -> None:
-    """Set one lane's first day: h, its derivatives, and the constants of the law (``shapes`` 0, 1 or 2)."""
+@in_place
+def begin(p: np.ndarray, lane: int, start: int, fixed: float, moments: np.ndarray, tails: Any, skew: Any) -> None:
+    """Set one lane's first day: h, its derivatives, and the constants of the law; ``moments`` (lanes, 6 or more)."""
     p[VALUE, lane] = 0.0
     p[AFTER, lane] = first_variance(p, lane, start, fixed, moments)
     for i in range(BETA + 1):
         for j in range(i, BETA + 1):
             p[DD + i * COUNT + j, lane] = first_curvature(i, j, p, lane, start, moments)
-    if shapes:
-        set_constants(p, LAW, lane, p[THETA + ETA, lane], p[THETA + LAMBDA, lane], shapes == 2)
+    if tails is not None:
+        set_constants(p, LAW, lane, p[THETA + ETA, lane], p[THETA + LAMBDA, lane], skew)
 
 
-@compiled
+@in_place
 def evaluate(p: np.ndarray, x: np.ndarray, skip: int, ar: Any, gjr: Any, tails: Any, skew: Any) -> None:
     """Run the pass of the member chosen over the days of ``x`` (W, lanes), after ``begin`` for every lane."""
     if ar is None:

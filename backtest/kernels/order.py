@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled
+from backtest.kernels.compiled import compiled, in_place
 
 
 @compiled
@@ -23,7 +23,7 @@ def largest(sample: np.ndarray, k: int) -> np.ndarray:
     return top
 
 
-@compiled
+@in_place
 def kth_largest(values: np.ndarray, k: int) -> float:
     """Return the ``k``-th largest of ``values``, which it reorders (Hoare 1961, Communications of the ACM 4:321)."""
     left, right, at = 0, values.size - 1, k - 1
@@ -48,7 +48,7 @@ def kth_largest(values: np.ndarray, k: int) -> float:
     return float(values[at])
 
 
-@compiled
+@in_place
 def sort_ascending(values: np.ndarray) -> None:
     """Sort ``values`` in place, by Shell's method with the gaps of Ciura (2001)."""
     for gap in (701, 301, 132, 57, 23, 10, 4, 1):
@@ -60,7 +60,7 @@ def sort_ascending(values: np.ndarray) -> None:
             values[j] = value
 
 
-@compiled
+@in_place
 def share_below(sample: np.ndarray, value: float) -> float:
     """Return (number of sample values strictly below ``value`` + 0.5) / (n + 1): the rank as a probability."""
     count = 0
@@ -102,7 +102,7 @@ def empirical_rows(samples: np.ndarray, levels: np.ndarray) -> tuple[np.ndarray,
     return quantile, shortfall
 
 
-@compiled
+@in_place
 def heaviest(sample: np.ndarray, weights: np.ndarray, share: float, bound: float, work: np.ndarray) -> int:
     """Write the largest values, in decreasing order and with their weights, up to the one that exceeds ``share``.
 

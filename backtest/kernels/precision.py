@@ -13,7 +13,7 @@ from typing import Any
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled
+from backtest.kernels.compiled import in_place
 from backtest.kernels.lanes import WIDTH
 from backtest.kernels.likelihood import begin, evaluate
 from backtest.kernels.parameters import ALPHA, BETA, COUNT, ETA, GAMMA, OMEGA, PHI, C
@@ -29,7 +29,7 @@ _FLAT = 1e-6
 _MEANS = [C, PHI]
 
 
-@compiled
+@in_place
 def curvature_rows(
     values: np.ndarray, chosen: np.ndarray, parameters: np.ndarray, pasts: Pasts, p: np.ndarray, member: Member,
     sums: np.ndarray, slopes: np.ndarray, ar: Any, gjr: Any, tails: Any, skew: Any,
@@ -51,7 +51,7 @@ def curvature_rows(
             for i in range(COUNT):
                 unit = 1.0 / scale if i == C else (1.0 / (scale * scale) if i == OMEGA else 1.0)
                 p[THETA + i, lane] = parameters[row, i] * unit
-            begin(p, lane, member.start, pasts.facts[lane, FIXED], pasts.facts[lane], member.shapes)
+            begin(p, lane, member.start, pasts.facts[lane, FIXED], pasts.facts, tails, skew)
         if tails is None:
             add_scores(p, pasts.x, member.skip, member.free)
         evaluate(p, pasts.x, member.skip, ar, gjr, tails, skew)

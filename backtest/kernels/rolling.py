@@ -9,12 +9,14 @@ from typing import Any, NamedTuple
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled, inner
+from backtest.kernels.compiled import in_place, inner
 from backtest.kernels.lanes import WIDTH
 from backtest.kernels.likelihood import begin, evaluate
 from backtest.kernels.parameters import ALPHA, BETA, COUNT, GAMMA, OMEGA, C
 from backtest.kernels.past import FIXED, MOMENTS, SCALE, VARIANCE, Pasts, prepare
+from backtest.kernels.quadratic import constrained_step
 from backtest.kernels.search import (
+    ACCEPTED,
     CONVERGED,
     END_AFTER,
     END_VALUE,
@@ -29,8 +31,11 @@ from backtest.kernels.search import (
     WARM,
     Search,
     begin_start,
+    go_on,
     look_around,
+    pose,
     receive,
+    turn,
 )
 from backtest.kernels.terms import THETA
 
@@ -195,17 +200,9 @@ def keep(
 
 @inner
 def seek(
-    values: np.ndarray,
-    pasts: Pasts,
-    p: np.ndarray,
-    s: Search,
-    c: Chains,
-    rows: Rows,
-    member: Member,
-    lane: int,
-    found: np.ndarray,
+    values: np.ndarray, pasts: Pasts, p: np.ndarray, s: Search, c: Chains, rows: Rows, member: Member, lane: int,
     status: np.ndarray,
-) -> None:
+) -> None:  # fmt: skip
     """Move a lane to its next day that can be fitted, taking a new run from the queue where its own has ended."""
     while True:
         if c.where[lane, AT] >= 0:
@@ -224,54 +221,54 @@ def seek(
         status[row] = CONSTANT
     for k in range(STARTS):
         s.counts[lane, FATES + k] = UNTRIED
-    first = next_start(s, lane, c.where[lane, WARM_HINT], True)
-    set_start(pasts, p, s, c, member, lane, first)
+    warm = c.where[lane, WARM_HINT] > 0
+    set_start(pasts, p, s, c, member, lane, next_start(s, lane, warm, warm))
 
 
 @inner
-def digest(
-    values: np.ndarray,
-    pasts: Pasts,
-    p: np.ndarray,
-    s: Search,
-    c: Chains,
-    rows: Rows,
-    member: Member,
-    lane: int,
-    found: np.ndarray,
-    status: np.ndarray,
-) -> None:
-    """Take a lane one evaluation further: the next point, the next start, or the next day."""
-    if s.counts[lane, GRID_PLACE] > 0:
-        look_around(s, p, lane, pasts.facts, pasts.facts[lane, VARIANCE], member.cap, member.gjr)
-        return
-    floor = 1e-8 * pasts.facts[lane, VARIANCE]
-    if receive(s, p, lane, member.free, floor, member.cap):
-        number = next_start(s, lane, c.where[lane, WARM_HINT], deep_search(c, rows, member, lane))
-        if number >= 0:
-            set_start(pasts, p, s, c, member, lane, number)
-        else:
-            keep(pasts, s, c, rows, member, lane, found, status)
-            seek(values, pasts, p, s, c, rows, member, lane, found, status)
+def move_on(
+    values: np.ndarray, pasts: Pasts, p: np.ndarray, s: Search, c: Chains, rows: Rows, member: Member, lane: int,
+    found: np.ndarray, status: np.ndarray,
+) -> None:  # fmt: skip
+    """Take a lane whose start has ended to the next start, or to the next day."""
+    number = next_start(s, lane, c.where[lane, WARM_HINT] > 0, deep_search(c, rows, member, lane))
+    if number >= 0:
+        set_start(pasts, p, s, c, member, lane, number)
+    else:
+        keep(pasts, s, c, rows, member, lane, found, status)
+        seek(values, pasts, p, s, c, rows, member, lane, status)
 
 
-@compiled
+@in_place
 def fit_rows(
     values: np.ndarray, pasts: Pasts, p: np.ndarray, s: Search, c: Chains, rows: Rows, member: Member,
     found: np.ndarray, status: np.ndarray,
     ar: Any, gjr: Any, tails: Any, skew: Any,
 ) -> None:  # fmt: skip
-    """Fit the chosen rows of ``values`` (n, W), raw losses, into ``found`` (n, FOUND) and ``status``."""
+    """Fit the chosen rows of ``values`` (n, W), raw losses, into ``found`` (n, FOUND) and ``status``.
+
+    One long function: what it calls is compiled by itself and here, and would be again at every level between.
+    """
     for lane in range(WIDTH):
-        seek(values, pasts, p, s, c, rows, member, lane, found, status)
+        seek(values, pasts, p, s, c, rows, member, lane, status)
     busy = True
     while busy:
         for lane in range(WIDTH):
             if c.where[lane, AT] >= 0:
-                begin(p, lane, member.start, pasts.facts[lane, FIXED], pasts.facts[lane], member.shapes)
+                begin(p, lane, member.start, pasts.facts[lane, FIXED], pasts.facts, tails, skew)
         evaluate(p, pasts.x, member.skip, ar, gjr, tails, skew)
         busy = False
         for lane in range(WIDTH):
-            if c.where[lane, AT] >= 0:
-                digest(values, pasts, p, s, c, rows, member, lane, found, status)
-                busy = busy or c.where[lane, AT] >= 0
+            if c.where[lane, AT] < 0:
+                continue
+            busy, floor = True, 1e-8 * pasts.facts[lane, VARIANCE]
+            if s.counts[lane, GRID_PLACE] > 0:
+                look_around(s, p, lane, pasts.facts, pasts.facts[lane, VARIANCE], member.cap, member.gjr)
+                continue
+            fate = receive(s, p, lane)
+            if fate == ACCEPTED:
+                pose(s, p, lane, member.free, floor, member.cap)
+                fate = turn(s, lane, member.free, floor, constrained_step(s.sheet, member.free.size))
+            go_on(s, p, lane, fate, floor, member.cap)
+            if fate != UNTRIED:
+                move_on(values, pasts, p, s, c, rows, member, lane, found, status)

@@ -14,7 +14,7 @@ from backtest.kernels.compiled import inner
 from backtest.kernels.lanes import WIDTH
 from backtest.kernels.parameters import ALPHA, BETA, COUNT, ETA, GAMMA, LAMBDA, OMEGA, PHI, C
 from backtest.kernels.past import MEAN
-from backtest.kernels.quadratic import constrained_step
+from backtest.kernels.quadratic import LINES, SLACK, STEP, A, G, Q, new_sheet
 from backtest.kernels.terms import AFTER, GRADIENT, HESSIAN, THETA, VALUE
 
 TOLERANCE = 1e-8
@@ -25,11 +25,9 @@ _GRID_POINTS = (
 _EXTRA_POINTS = ((0.0, 0.98), (0.20, 0.85), (0.03, 0.985))
 """(reaction, persistence) of the starts beside the warm one; the first seeks the optimum without reaction."""
 _FIRST_ETA, LOWEST_ETA, HIGHEST_ETA, WIDEST_LAMBDA = 0.12, 0.002, 1.0 / 2.05, 0.95
-UNTRIED, FAILED, CONVERGED, FLAT_END = 0, -1, 1, 2
-"""How a start ended; flat: the curvature had to be helped in the last step."""
+UNTRIED, FAILED, CONVERGED, FLAT_END, ACCEPTED = 0, -1, 1, 2, 3
+"""How a start ended; flat: the curvature had to be helped in the last step. Accepted: not ended, a new step is due."""
 _WIDEST_PHI = 0.999
-_ROWS = 11
-
 
 THETA_AT, DIRECTION = 0, COUNT
 AT_VALUE, AT_LENGTH, AT_SLOPE, AT_AFTER, BEST_VALUE, BEST_INDEX, STATE = (2 * COUNT + i for i in range(7))
@@ -48,11 +46,13 @@ class Search(NamedTuple):
     state: np.ndarray  # (lanes, STATE)
     counts: np.ndarray  # (lanes, COUNTERS)
     ends: np.ndarray  # (lanes, STARTS, END)
+    sheet: np.ndarray  # of the quadratic programme in hand
 
 
 def new_search() -> Search:
     """Return the state of eight searches, to be reused."""
-    return Search(np.zeros((WIDTH, STATE)), np.zeros((WIDTH, COUNTERS), np.int64), np.ones((WIDTH, STARTS, END)))
+    counts, ends = np.zeros((WIDTH, COUNTERS), np.int64), np.ones((WIDTH, STARTS, END))
+    return Search(np.zeros((WIDTH, STATE)), counts, ends, new_sheet())
 
 
 @inner
@@ -96,42 +96,44 @@ def look_around(s: Search, p: np.ndarray, lane: int, facts: np.ndarray, variance
 
 
 @inner
-def constraints(
-    theta: np.ndarray, lane: int, free: np.ndarray, floor: float, cap: float, A: np.ndarray, slack: np.ndarray
-) -> None:
-    """Fill the rows A d <= slack of the free parameters; a row without a free parameter never binds."""
-    for i in range(_ROWS):
-        slack[i] = 1.0
+def constrain(theta: np.ndarray, lane: int, free: np.ndarray, floor: float, cap: float, w: np.ndarray) -> None:
+    """Write the constraints on the free parameters into the sheet; one without a free parameter never binds."""
+    for i in range(LINES):
+        w[SLACK, i] = 1.0
         for a in range(free.size):
-            A[i, a] = 0.0
+            w[A + i, a] = 0.0
     gjr = False
     for a in range(free.size):
         gjr = gjr or free[a] == GAMMA
     for a in range(free.size):
         i = free[a]
         if i == PHI:
-            A[9, a], A[10, a] = -1.0, 1.0
-            slack[9], slack[10] = theta[lane, PHI] + _WIDEST_PHI, _WIDEST_PHI - theta[lane, PHI]
+            bound_both(w, 9, a, theta[lane, PHI], -_WIDEST_PHI, _WIDEST_PHI)
         elif i == OMEGA:
-            A[0, a], slack[0] = -1.0, theta[lane, OMEGA] - floor
+            w[A, a], w[SLACK, 0] = -1.0, theta[lane, OMEGA] - floor
         elif i == ALPHA:
-            A[1, a], slack[1], A[4, a] = -1.0, theta[lane, ALPHA], 1.0
-            A[2, a] = -1.0 if gjr else 0.0
+            w[A + 1, a], w[SLACK, 1], w[A + 4, a] = -1.0, theta[lane, ALPHA], 1.0
+            w[A + 2, a] = -1.0 if gjr else 0.0
         elif i == GAMMA:
-            A[2, a], A[4, a] = -1.0, 0.5
+            w[A + 2, a], w[A + 4, a] = -1.0, 0.5
         elif i == BETA:
-            A[3, a], slack[3], A[4, a] = -1.0, theta[lane, BETA], 1.0
+            w[A + 3, a], w[SLACK, 3], w[A + 4, a] = -1.0, theta[lane, BETA], 1.0
         elif i == ETA:
-            A[5, a], A[6, a] = -1.0, 1.0
-            slack[5], slack[6] = theta[lane, ETA] - LOWEST_ETA, HIGHEST_ETA - theta[lane, ETA]
+            bound_both(w, 5, a, theta[lane, ETA], LOWEST_ETA, HIGHEST_ETA)
         elif i == LAMBDA:
-            A[7, a], A[8, a] = -1.0, 1.0
-            slack[7], slack[8] = theta[lane, LAMBDA] + WIDEST_LAMBDA, WIDEST_LAMBDA - theta[lane, LAMBDA]
+            bound_both(w, 7, a, theta[lane, LAMBDA], -WIDEST_LAMBDA, WIDEST_LAMBDA)
     if gjr:
-        slack[2] = theta[lane, ALPHA] + theta[lane, GAMMA]
-    slack[4] = cap - theta[lane, ALPHA] - 0.5 * theta[lane, GAMMA] - theta[lane, BETA]
-    for i in range(_ROWS):
-        slack[i] = max(slack[i], 0.0)
+        w[SLACK, 2] = theta[lane, ALPHA] + theta[lane, GAMMA]
+    w[SLACK, 4] = cap - theta[lane, ALPHA] - 0.5 * theta[lane, GAMMA] - theta[lane, BETA]
+    for i in range(LINES):
+        w[SLACK, i] = max(w[SLACK, i], 0.0)
+
+
+@inner
+def bound_both(w: np.ndarray, line: int, a: int, value: float, low: float, high: float) -> None:
+    """Write the two constraints that keep free parameter ``a``, now at ``value``, between bounds."""
+    w[A + line, a], w[A + line + 1, a] = -1.0, 1.0
+    w[SLACK, line], w[SLACK, line + 1] = value - low, high - value
 
 
 @inner
@@ -150,30 +152,41 @@ def shrink_of(state: np.ndarray, lane: int, floor: float) -> float:
 
 
 @inner
-def newton_step(
-    state: np.ndarray, p: np.ndarray, lane: int, free: np.ndarray, floor: float, cap: float
-) -> tuple[float, float, bool, bool]:
-    """Fill the direction with the constrained step; return predicted gain, slope, whether capped, whether damped."""
-    n = free.size
-    Q, g, A, slack = np.empty((n, n)), np.empty(n), np.empty((_ROWS, n)), np.empty(_ROWS)
-    for a in range(n):
-        g[a] = p[GRADIENT + free[a], lane]
-        for b in range(a, n):
-            Q[a, b] = Q[b, a] = -p[HESSIAN + free[a] * COUNT + free[b], lane]
-    constraints(state, lane, free, floor, cap, A, slack)
-    d, damped = constrained_step(Q, g, A, slack)
+def pose(s: Search, p: np.ndarray, lane: int, free: np.ndarray, floor: float, cap: float) -> None:
+    """Make the trial point the accepted one and write the programme for the step from it into the sheet."""
+    state, counts, w = s.state, s.counts, s.sheet
+    for i in range(COUNT):
+        state[lane, i] = p[THETA + i, lane]
+    state[lane, AT_VALUE], state[lane, AT_AFTER] = p[VALUE, lane], p[AFTER, lane]
+    counts[lane, ITERATIONS], counts[lane, SHRINKS], counts[lane, HAS_VALUE] = counts[lane, ITERATIONS] + 1, 0, 1
+    for a in range(free.size):
+        w[G, a] = p[GRADIENT + free[a], lane]
+        for b in range(a, free.size):
+            w[Q + a, b] = w[Q + b, a] = -p[HESSIAN + free[a] * COUNT + free[b], lane]
+    constrain(state, lane, free, floor, cap, w)
+
+
+@inner
+def turn(s: Search, lane: int, free: np.ndarray, floor: float, damped: bool) -> int:
+    """Take the direction from the solved programme; return how the start ends, or UNTRIED."""
+    state, counts, w = s.state, s.counts, s.sheet
     for i in range(COUNT):
         state[lane, DIRECTION + i] = 0.0
     slope, bend = 0.0, 0.0
-    for a in range(n):
-        state[lane, DIRECTION + free[a]] = d[a]
-        slope += g[a] * d[a]
-        for b in range(n):
-            bend += Q[a, b] * d[a] * d[b]
+    for a in range(free.size):
+        state[lane, DIRECTION + free[a]] = w[STEP, a]
+        slope += w[G, a] * w[STEP, a]
+        for b in range(free.size):
+            bend += w[Q + a, b] * w[STEP, a] * w[STEP, b]
     scale = shrink_of(state, lane, floor)
     for i in range(COUNT):
         state[lane, DIRECTION + i] *= scale
-    return scale * slope - 0.5 * scale * scale * bend, scale * slope, scale < 1.0, damped
+    gain = scale * slope - 0.5 * scale * scale * bend
+    if gain < TOLERANCE and not scale < 1.0:
+        state[lane, AT_VALUE] += max(gain, 0.0)
+        return FLAT_END if damped else CONVERGED
+    state[lane, AT_LENGTH], state[lane, AT_SLOPE] = 1.0, scale * slope
+    return FAILED if counts[lane, ITERATIONS] > 80 else UNTRIED
 
 
 @inner
@@ -203,43 +216,27 @@ def end_start(s: Search, lane: int, fate: int) -> None:
 
 
 @inner
-def receive(s: Search, p: np.ndarray, lane: int, free: np.ndarray, floor: float, cap: float) -> bool:
-    """Digest an evaluation at the trial point; return True when the start in hand has come to its end."""
-    state, counts, value, fate = s.state, s.counts, p[VALUE, lane], UNTRIED
+def receive(s: Search, p: np.ndarray, lane: int) -> int:
+    """Judge an evaluation at the trial point: ACCEPTED, FAILED, or UNTRIED where a shorter step is to be tried."""
+    state, counts, value = s.state, s.counts, p[VALUE, lane]
     enough = state[lane, AT_VALUE] + 1e-4 * state[lane, AT_LENGTH] * state[lane, AT_SLOPE] - 1e-10
-    length = 1.0
     if counts[lane, HAS_VALUE] and not value >= enough:
         counts[lane, SHRINKS] += 1
         state[lane, AT_LENGTH] *= 0.3
-        length = state[lane, AT_LENGTH]
-        fate = FAILED if counts[lane, SHRINKS] > 20 else UNTRIED
-    elif not math.isfinite(value):
-        state[lane, AT_VALUE], state[lane, AT_AFTER], fate = -np.inf, 1.0, FAILED
-    else:
-        fate = accept(s, p, lane, free, floor, cap)
-    if fate != FAILED:
-        take(state, p, lane, length, floor, cap)
-    if fate >= CONVERGED:
-        for i in range(COUNT):
-            state[lane, i] = p[THETA + i, lane]
-    if fate != UNTRIED:
-        end_start(s, lane, fate)
-    return fate != UNTRIED
+        return FAILED if counts[lane, SHRINKS] > 20 else UNTRIED
+    if not math.isfinite(value):
+        state[lane, AT_VALUE], state[lane, AT_AFTER] = -np.inf, 1.0
+        return FAILED
+    return ACCEPTED
 
 
 @inner
-def accept(s: Search, p: np.ndarray, lane: int, free: np.ndarray, floor: float, cap: float) -> int:
-    """Make the trial point the accepted one and find the direction from it; return how the start ends, or UNTRIED."""
-    state, counts = s.state, s.counts
-    for i in range(COUNT):
-        state[lane, i] = p[THETA + i, lane]
-    state[lane, AT_VALUE], state[lane, AT_AFTER] = p[VALUE, lane], p[AFTER, lane]
-    counts[lane, ITERATIONS], counts[lane, SHRINKS], counts[lane, HAS_VALUE] = counts[lane, ITERATIONS] + 1, 0, 1
-    gain, slope, capped, damped = newton_step(state, p, lane, free, floor, cap)
-    if gain < TOLERANCE and not capped:
-        state[lane, AT_VALUE] += max(gain, 0.0)
-        return FLAT_END if damped else CONVERGED
-    if counts[lane, ITERATIONS] > 80:
-        return FAILED
-    state[lane, AT_LENGTH], state[lane, AT_SLOPE] = 1.0, slope
-    return UNTRIED
+def go_on(s: Search, p: np.ndarray, lane: int, fate: int, floor: float, cap: float) -> None:
+    """Set the next trial point along the direction, or keep where the start in hand ended."""
+    if fate != FAILED:
+        take(s.state, p, lane, 1.0 if fate >= CONVERGED else s.state[lane, AT_LENGTH], floor, cap)
+    if fate >= CONVERGED:
+        for i in range(COUNT):
+            s.state[lane, i] = p[THETA + i, lane]
+    if fate != UNTRIED:
+        end_start(s, lane, fate)

@@ -32,7 +32,8 @@ def start_variance(p: np.ndarray, lane: int, start: int, fixed: float, moments: 
         return float(omega / (1.0 - persistence))
     if start == MEAN_SQUARE:
         c, phi = p[THETA + C, lane], p[THETA + PHI, lane]
-        n, sx, sl, sxx, sll, sxl = moments[0], moments[1], moments[2], moments[3], moments[4], moments[5]
+        n, sx, sl = moments[lane, 0], moments[lane, 1], moments[lane, 2]
+        sxx, sll, sxl = moments[lane, 3], moments[lane, 4], moments[lane, 5]
         return float((sxx + phi * phi * sll - 2 * phi * sxl - 2 * c * sx + 2 * c * phi * sl) / n + c * c)
     return float(fixed)
 
@@ -50,9 +51,9 @@ def first_variance(p: np.ndarray, lane: int, start: int, fixed: float, moments: 
             p[D + i, lane] = weight(i) * omega * r * r
         return b
     if start == MEAN_SQUARE:
-        c, phi, n = p[THETA + C, lane], p[THETA + PHI, lane], moments[0]
-        p[D + C, lane] = persistence * 2 * (c + (phi * moments[2] - moments[1]) / n)
-        p[D + PHI, lane] = persistence * 2 * (phi * moments[4] - moments[5] + c * moments[2]) / n
+        c, phi, n = p[THETA + C, lane], p[THETA + PHI, lane], moments[lane, 0]
+        p[D + C, lane] = persistence * 2 * (c + (phi * moments[lane, 2] - moments[lane, 1]) / n)
+        p[D + PHI, lane] = persistence * 2 * (phi * moments[lane, 4] - moments[lane, 5] + c * moments[lane, 2]) / n
     p[D + OMEGA, lane] = 1.0
     for i in range(ALPHA, BETA + 1):
         p[D + i, lane] = weight(i) * b
@@ -72,6 +73,6 @@ def first_curvature(i: int, j: int, p: np.ndarray, lane: int, start: int, moment
         return 0.0
     if j > PHI:
         return weight(j) * p[D + i, lane] / persistence if persistence > 0.0 else 0.0
-    n = moments[0]
-    entry = 1.0 if i == j == C else (moments[2] / n if i != j else moments[4] / n)
+    n = moments[lane, 0]
+    entry = 1.0 if i == j == C else (moments[lane, 2] / n if i != j else moments[lane, 4] / n)
     return persistence * 2.0 * entry

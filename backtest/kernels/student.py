@@ -10,7 +10,7 @@ import math
 
 import numpy as np
 
-from backtest.kernels.compiled import compiled
+from backtest.kernels.compiled import compiled, in_place
 
 MODE, LOG_TAU, ETA, SKEW = range(4)
 
@@ -19,7 +19,7 @@ _LOG_PI = math.log(math.pi)
 _LARGE = 1e150
 
 
-@compiled
+@in_place
 def digamma_trigamma(x: float) -> tuple[float, float]:
     """Return the first two derivatives of log Gamma at x > 0: recurrence to x >= 10, then the asymptotic series."""
     first, second = 0.0, 0.0
@@ -34,7 +34,7 @@ def digamma_trigamma(x: float) -> tuple[float, float]:
     return first, second
 
 
-@compiled
+@in_place
 def log_constant(eta: float) -> tuple[float, float, float]:
     """Return G = log Gamma((nu + 1)/2) - log Gamma(nu/2) - log(pi nu)/2 and its first two derivatives by eta."""
     nu = 1.0 / eta
@@ -46,7 +46,7 @@ def log_constant(eta: float) -> tuple[float, float, float]:
     return value, -nu * nu * by_nu, nu * nu * nu * (nu * by_nu_2 + 2.0 * by_nu)
 
 
-@compiled
+@in_place
 def evaluate_t(x: np.ndarray, at: np.ndarray, gradient: np.ndarray, hessian: np.ndarray) -> float:
     """Return the log-likelihood of a sample at ``at`` (4); fill ``gradient`` (4) and ``hessian`` (4, 4).
 
@@ -89,7 +89,7 @@ def evaluate_t(x: np.ndarray, at: np.ndarray, gradient: np.ndarray, hessian: np.
     return float(n * (value - at[LOG_TAU]) - 0.5 * (1.0 + 1.0 / eta) * logs)
 
 
-@compiled
+@in_place
 def add_side(
     gradient: np.ndarray,
     hessian: np.ndarray,
@@ -118,7 +118,7 @@ def add_side(
     hessian[SKEW, SKEW] += c * h * h * (2.0 * eta * bb - 3.0 * b)
 
 
-@compiled
+@in_place
 def standardise(at: np.ndarray, first: np.ndarray, second: np.ndarray) -> None:
     """Set mode and scale in ``at`` to those of zero mean and unit variance.
 

@@ -41,15 +41,15 @@ def evaluated(losses, member, start, skip=0):
     theta, free = point(*member)
     x = aligned(DAYS, 8)
     x[:] = losses
-    work = new_pass()
+    work, moments = new_pass(), np.empty((8, 6))
+    flags = [True if f else None for f in (mean == "ar1", gjr, law != "normal", law == "skew")]
     work[THETA : THETA + 8] = theta[:, None]
     for lane in range(8):
         column = losses[:, lane]
         lag, y = np.concatenate([[0.0], column[:-1]])[skip:], column[skip:]
-        moments = np.array([y.size, y.sum(), lag.sum(), y @ y, lag @ lag, y @ lag])
-        begin(work, lane, STARTS[start], 1.3, moments, {"normal": 0, "tails": 1, "skew": 2}[law])
-    flags = (mean == "ar1", gjr, law != "normal", law == "skew")
-    evaluate(work, x, skip, *(True if f else None for f in flags))
+        moments[lane] = y.size, y.sum(), lag.sum(), y @ y, lag @ lag, y @ lag
+        begin(work, lane, STARTS[start], 1.3, moments, *flags[2:])
+    evaluate(work, x, skip, *flags)
     upper = np.triu(work[HESSIAN : HESSIAN + 64, LANE].reshape(8, 8))
     hessian = upper + np.triu(upper, 1).T
     return work[VALUE, LANE], work[GRADIENT + free, LANE], hessian[np.ix_(free, free)], theta, free
