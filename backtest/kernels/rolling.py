@@ -116,11 +116,11 @@ def best_end(s: Search, lane: int) -> int:
 
 @inner
 def next_start(s: Search, lane: int, warm: bool, deep: bool) -> int:
-    """Return the number of the start to follow next, or -1; ``deep`` asks for every extra start."""
+    """Return the number of the start to follow next, or -1; ``deep`` asks for every start."""
     counts = s.counts
     if warm and counts[lane, FATES + WARM] == UNTRIED:
         return WARM
-    if (not warm or counts[lane, FATES + WARM] == FAILED) and counts[lane, FATES + GRID] == UNTRIED:
+    if (deep or not warm or counts[lane, FATES + WARM] == FAILED) and counts[lane, FATES + GRID] == UNTRIED:
         return GRID
     best = best_end(s, lane)
     if not deep and best >= 0 and counts[lane, FATES + best] == CONVERGED:

@@ -22,7 +22,7 @@ WARM, GRID, FIRST_EXTRA, STARTS = 0, 1, 2, 5
 _GRID_POINTS = (
     (0.02, 0.60), (0.10, 0.80), (0.05, 0.90), (0.15, 0.95), (0.05, 0.97), (0.03, 0.985), (0.08, 0.99), (0.04, 0.999),
 )  # fmt: skip
-_EXTRA_POINTS = ((0.0, 0.98), (0.20, 0.85), (0.03, 0.985))
+_EXTRA_POINTS = ((0.0, 0.98), (0.08, 0.90), (0.03, 0.985))
 """(reaction, persistence) of the starts beside the warm one; the first seeks the optimum without reaction."""
 _FIRST_ETA, LOWEST_ETA, HIGHEST_ETA, WIDEST_LAMBDA = 0.12, 0.002, 1.0 / 2.05, 0.95
 UNTRIED, FAILED, CONVERGED, FLAT_END, ACCEPTED = 0, -1, 1, 2, 3

@@ -1,7 +1,7 @@
 """Every window of three series: our likelihood against the better feasible optimum that arch found, cold or warm.
 
 The optima are kept in tests/data/arch_optima.parquet, made by tests/reference/make_arch_optima.py. SLSQP leaves
-persistence above one by up to a millionth in some windows: such an answer is not feasible and is not compared with.
+its bounds by up to a millionth in some windows: such an answer is not feasible and is not compared with.
 """
 
 from functools import cache
@@ -33,7 +33,7 @@ def stored() -> pd.DataFrame:
 def reference(series: str, model: str) -> pd.DataFrame:
     """Return one row a window, with the better feasible log likelihood as ``best`` (NaN where neither is feasible)."""
     table = stored()[(stored()["series"] == series) & (stored()["model"] == model)].sort_values("window")
-    found = [table[f"{way}_loglik"].where(table[f"{way}_persistence"] <= 1.0) for way in ("cold", "warm")]
+    found = [table[f"{way}_loglik"].where(table[f"{way}_slack"] >= 0.0) for way in ("cold", "warm")]
     return table.assign(best=np.fmax(*found))
 
 
@@ -57,9 +57,9 @@ def shortfalls(series: str, model: str, *, every_start: bool = False) -> tuple[p
 def test_ours_is_lower_in_at_most_one_window_in_a_thousand_and_nowhere_on_the_sp500(series, model):
     worse, compared = shortfalls(series, model)
     allowed = 0 if series == "sp500" else compared // 1000
-    shown = worse[["window", "gap", "status", "cold_persistence", "warm_persistence"]]
+    shown = worse[["window", "gap", "status", "cold_slack", "warm_slack"]]
     print(f"\n{series} {model}: lower by more than 1e-6 in {len(worse)} of {compared} windows\n{shown.to_string()}")
-    assert compared > 900
+    assert compared > 750
     assert len(worse) <= allowed, shown.to_string()
 
 
@@ -84,7 +84,7 @@ def test_arch_reports_success_where_it_sits_far_below_and_we_say_by_how_much():
             table, ours = reference(series, model), rolled(series, model).loglik
             for way in ("cold", "warm"):
                 gain = (ours - table[f"{way}_loglik"]).to_numpy()
-                gain, flag = gain[table[f"{way}_persistence"] <= 1.0], table[f"{way}_flag"]
+                gain, flag = gain[table[f"{way}_slack"] >= 0.0], table[f"{way}_flag"]
                 counts = [int((gain > limit).sum()) for limit in (1e-6, 1e-3, 0.1)]
                 rows.append((series, model, way, len(gain), *counts, gain.max(), int((flag != 0).sum())))
     columns = ["series", "model", "arch start", "windows", ">1e-6", ">1e-3", ">0.1", "largest", "flag not 0"]
