@@ -1,6 +1,7 @@
 """Many desks: which rejections survive being picked out of many. It orders the list of desks; it decides nothing.
 
-Adjusted within one question, across desks and the question's tests: rows of one model, P&L kind, level and span.
+Adjusted within one question, across desks: rows of one test, model, P&L kind, level and span. Tests of the same
+question are not added up, so that asking one more changes no other's decision.
 """
 
 from collections.abc import Sequence
@@ -13,6 +14,8 @@ from backtest.records import Result
 
 Floats = npt.NDArray[np.float64]
 
+RUNNING = "running"
+"""The question of evidence watched day by day: outside these decisions, as it is outside the criteria."""
 HOLM, STEP_UP, NEITHER = "rejected by Holm", "rejected by Benjamini-Hochberg", "not rejected"
 """Words of ``decision_across_desks``; what Holm rejects, Benjamini-Hochberg rejects too."""
 
@@ -41,8 +44,8 @@ def with_decisions(results: Sequence[Result], places: Sequence[int], significanc
     """
     families: dict[tuple[object, ...], list[int]] = {}
     for i, (r, place) in enumerate(zip(results, places, strict=True)):
-        if r.p_value is not None:
-            families.setdefault((r.question, r.model, r.against, r.pnl_kind, r.level, place), []).append(i)
+        if r.p_value is not None and r.question != RUNNING:
+            families.setdefault((r.test, r.model, r.against, r.pnl_kind, r.level, place), []).append(i)
     decided = list(results)
     for members in families.values():
         if len({results[i].desk for i in members}) < 2:

@@ -3,10 +3,11 @@
 Every family file ends with a tuple ``TESTS`` of the declarations below; ``battery`` collects them.
 """
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 from backtest.judging.phrases import decision, phrase
+from backtest.judging.power_table import could_see
 from backtest.judging.rules.profiles import Profile
 from backtest.judging.samples import Book, Days, Sample
 from backtest.records import Result
@@ -37,11 +38,15 @@ class Answer:
 
 @dataclass(frozen=True)
 class Settings:
-    """Significance of decisions, number of simulated replicates, and the seed all random numbers are spawned from."""
+    """Significance of decisions, number of simulated replicates, and the seed all random numbers are spawned from.
+
+    ``lagged_hits``: how many lags of exceptions the dynamic quantile test regresses on.
+    """
 
     significance: float
     simulations: int
     seed: int
+    lagged_hits: int = 1
 
 
 @dataclass(frozen=True)
@@ -62,6 +67,16 @@ class PairTest:
     question: str
     source: str
     judge: Callable[[Sample, Sample, Settings], Answer]
+
+
+@dataclass(frozen=True)
+class SetTest:
+    """A test of all models of a desk at once; ``judge`` gets their samples on shared days and answers for each."""
+
+    key: str
+    question: str
+    source: str
+    judge: Callable[[Sequence[Sample], Settings], Sequence[Answer]]
 
 
 @dataclass(frozen=True)
@@ -87,7 +102,8 @@ class RuleTest:
     judge: Callable[[Book, Ruling], Result]
 
 
-Declared = SampleTest | PairTest | RuleTest
+Asked = SampleTest | PairTest | SetTest
+Declared = Asked | RuleTest
 
 
 def ends(dates: Days) -> tuple[str, str]:
@@ -95,16 +111,23 @@ def ends(dates: Days) -> tuple[str, str]:
     return (str(dates[0]), str(dates[-1])) if len(dates) else ("", "")
 
 
-def dress(answer: Answer, sample: Sample, test: SampleTest | PairTest, settings: Settings, against: str = "") -> Result:
-    """Return the answer as a Result: the sample's address, the decision and the phrase beside it."""
+def dress(answer: Answer, sample: Sample, test: Asked, settings: Settings, against: str = "") -> Result:
+    """Return the answer as a Result: the sample's address, the decision, what the test could see, the phrase.
+
+    ``could_see`` comes from the shipped table where the answer has a p-value and does not bring its own.
+    """
     used = answer.used if answer.used is not None else sample
     first, last = ends(used.dates)
+    power, of_power = answer.could_see, ""
+    if power is None and answer.p_value is not None:
+        shipped = test.key != "dynamic-quantile" or settings.lagged_hits == 1  # the variant in the table
+        power, of_power = could_see(test.key, test.question, sample.level, used.days, settings.significance, shipped)
     return Result(
         desk=sample.desk, model=sample.model, against=against, pnl_kind=sample.kind, level=sample.level,
         first=first, last=last, days=used.days, exceptions=used.exceptions, question=test.question, test=test.key,
         statistic=answer.statistic, p_value=answer.p_value, law=answer.law, estimate=answer.estimate, low=answer.low,
-        high=answer.high, direction=answer.direction, could_see=answer.could_see,
+        high=answer.high, direction=answer.direction, could_see=power,
         decision=decision(answer.p_value, settings.significance), decision_across_desks="",
-        phrase=phrase(answer.p_value, settings.significance, answer.evidence, answer.could_see, answer.missing),
-        note="; ".join(answer.notes), source=test.source,
+        phrase=phrase(answer.p_value, settings.significance, answer.evidence, power, answer.missing),
+        note="; ".join((*answer.notes, of_power) if of_power else answer.notes), source=test.source,
     )  # fmt: skip

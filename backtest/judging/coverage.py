@@ -10,7 +10,7 @@ from scipy.special import xlog1py, xlogy
 from backtest.judging.answers import Answer, SampleTest, Settings
 from backtest.judging.counts import at_least, pmf, rate_interval, two_sided
 from backtest.judging.phrases import in_hundred, p_text
-from backtest.judging.power import two_sided_power, upper_power
+from backtest.judging.power import upper_power
 from backtest.judging.samples import Sample
 
 Floats = npt.NDArray[np.float64]
@@ -50,18 +50,16 @@ def _of_rate(sample: Sample) -> Answer:
     return Answer(estimate=x / days, low=low, high=high, direction=direction, evidence=evidence)
 
 
-def _binomial(sample: Sample, settings: Settings) -> Answer:
+def _binomial(sample: Sample, _: Settings) -> Answer:
     x, days, rate = sample.exceptions, sample.days, sample.nominal
     if days == 0:
         return NO_DAYS
     notes = (
         f"one-sided p for too many exceptions {p_text(at_least(x, days, rate))}",
-        "could_see: exact chance that this two-sided p rejects if the true rate is twice the nominal",
-        f"the one-sided test at 5% would see that {in_hundred(upper_power(days, sample.level))}",
+        f"the one-sided test at 5% would see twice the nominal rate {in_hundred(upper_power(days, sample.level))}",
     )
-    power = two_sided_power(days, sample.level, significance=settings.significance)
     p_value = two_sided(x, days, rate)
-    return replace(_of_rate(sample), statistic=float(x), p_value=p_value, law="exact", could_see=power, notes=notes)
+    return replace(_of_rate(sample), statistic=float(x), p_value=p_value, law="exact", notes=notes)
 
 
 def _kupiec(sample: Sample, _: Settings) -> Answer:

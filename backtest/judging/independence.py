@@ -120,7 +120,8 @@ def _wilson(hits: int, total: int) -> tuple[float, float, float]:
     return share, max(0.0, float(middle - half)), min(1.0, float(middle + half))
 
 
-def _of_clustering(sample: Sample) -> Answer:
+def of_clustering(sample: Sample) -> Answer:
+    """Return the effect size tests of "when" share: pi11 - pi01 in percentage points, its interval and side."""
     size = clustering(*transitions(sample.hits)) if sample.days else None
     if size is None:
         return Answer(evidence="clustered", notes=("pi11 - pi01 not defined: no day after an exception, or only such",))
@@ -134,7 +135,7 @@ def _of_clustering(sample: Sample) -> Answer:
 
 def _independence(sample: Sample, _: Settings) -> Answer:
     days, count = sample.days, sample.exceptions
-    size, missing = _of_clustering(sample), _lacking(days, count)
+    size, missing = of_clustering(sample), _lacking(days, count)
     if days < 2:
         return Answer(missing=missing)
     statistic = float(independence_ratio(*transitions(sample.hits)))
@@ -157,7 +158,7 @@ def _coverage(sample: Sample, _: Settings) -> Answer:
     days, count, rate = sample.days, sample.exceptions, sample.nominal
     if days == 0:
         return NO_DAYS
-    size = _of_clustering(sample)
+    size = of_clustering(sample)
     often = float(likelihood_ratio(count, days, rate))
     when = float(independence_ratio(*transitions(sample.hits)))
     side = "var-low" if count > days * rate else "var-high"

@@ -1,16 +1,20 @@
 """How much would have sufficed: the multiple of the VaR, and of the ES, that the realised losses call for."""
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 import numpy.typing as npt
 from scipy.special import betainc
 
-from backtest.judging.nulls import resampled_tops
+from backtest.judging.nulls import generator
 
 Floats = npt.NDArray[np.float64]
 
-RESAMPLES = 1999
+PIVOTS = 19_999
+PIVOT_SHAPE = 0.15
+"""GPD shape of the simulated law behind the interval for ES: a stated assumption."""
+_FEWEST_LARGEST = 5
 _ROUNDING = 1e-9
 
 
@@ -69,21 +73,48 @@ def _rank(n: int, q: float) -> int:
 
 
 def sufficient_es_multiple(losses: Floats, es: Floats, level: float, seed: int) -> Multiple:
-    """Return the empirical ES of loss/ES with a percentile bootstrap interval over days.
+    """Return the empirical ES of loss/ES, its interval from the simulated law of a GPD tail of shape 0.15.
 
     losses, es: float64[T], positive loss amounts; days with ES <= 0 or unknown are skipped and counted. The empirical
-    ES is the exact integral of the step-function quantile above ``level``.
+    ES e is the exact integral of the step-function quantile above ``level``. Let k = max(ceil(n (1 - level)), 5), e_k
+    the mean of the k largest and S^2 = Var(k largest) + (e_k - next)^2: the law of (true ES - e)/S depends on nothing
+    but the tail's shape, and on that little. Measured coverage of the nominal 95%, 250 to 2,500 independent days, 97.5
+    and 99%: normal losses 94 to 98, t8 and t5 95 to 96, t3 93 to 95 (percentile bootstrap over days: 76 to 83 at 250).
+    No interval: fewer than k + 1 days, or k + 1 equal losses.
     """
     known = es > 0.0
-    ratios = np.sort(losses[known] / es[known])
+    ratios = np.sort(losses[known] / es[known])[::-1]
     n = len(ratios)
     if n == 0:
         return Multiple(None, None, None, 0, len(losses))
     weights = _tail_weights(n, level)
-    estimate = float(ratios[::-1][: len(weights)] @ weights)
-    tops = resampled_tops(seed, level, n, len(weights), RESAMPLES)
-    low, high = np.quantile(ratios[tops] @ weights, [0.025, 0.975])
-    return Multiple(estimate, float(low), float(high), n, len(losses) - n)
+    top = max(len(weights), _FEWEST_LARGEST)
+    estimate = float(ratios[: len(weights)] @ weights)
+    spread = float(_spread(ratios[None, : top + 1])[0]) if n > top else 0.0
+    if spread <= _ROUNDING * abs(estimate):
+        return Multiple(estimate, None, None, n, len(losses) - n)
+    low, high = _pivots(seed, level, n)
+    return Multiple(estimate, estimate + low * spread, estimate + high * spread, n, len(losses) - n)
+
+
+def _spread(largest: Floats) -> Floats:
+    """Return S of each row: largest values float64[m, k + 1], descending."""
+    top, following = largest[:, :-1], largest[:, -1]
+    return np.asarray(np.sqrt(top.var(axis=1) + (top.mean(axis=1) - following) ** 2))
+
+
+@lru_cache(maxsize=64)
+def _pivots(seed: int, level: float, n: int) -> tuple[float, float]:
+    """Return the 2.5% and 97.5% points of (true ES - empirical ES)/S for n draws of a GPD tail."""
+    weights = _tail_weights(n, level)
+    top = max(len(weights), _FEWEST_LARGEST)
+    rng, xi = generator(seed, "multiple of ES", level, n), PIVOT_SHAPE
+    steps = rng.standard_exponential((PIVOTS, top + 1)) / np.arange(n, n - top - 1, -1)
+    chances = -np.expm1(-np.cumsum(steps, axis=1))  # of a larger loss: the smallest of n uniforms
+    losses = np.expm1(-xi * np.log(chances)) / xi
+    true = np.expm1(-xi * np.log1p(-level)) / xi / (1.0 - xi) + 1.0 / (1.0 - xi)
+    low, high = np.quantile((true - losses[:, : len(weights)] @ weights) / _spread(losses), [0.025, 0.975])
+    return float(low), float(high)
 
 
 def _tail_weights(n: int, level: float) -> Floats:

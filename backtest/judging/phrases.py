@@ -8,11 +8,18 @@ EVIDENCE = {
     "var-high": "evidence that VaR is too high",
     "clustered": "evidence that exceptions are too clustered",
     "spread": "evidence that exceptions are too evenly spread",
+    "with-var": "evidence that exceptions depend on the size of VaR",
     "es-low": "evidence that ES is too low",
+    "es-high": "evidence that ES is too high",
     "risk-low": "evidence that VaR or ES is too low",
     "risk-high": "evidence that VaR or ES is too high",
+    "tail-thin": "evidence that the tail is too thin",
+    "tail-heavy": "evidence that the tail is too heavy",
+    "shape": "evidence that the distribution is not as forecast",
     "better": "evidence that this model forecasts better",
     "worse": "evidence that this model forecasts worse",
+    "unequal": "evidence that the two models do not forecast equally well",
+    "not-best": "evidence that this model is not among the best",
 }
 """What a rejection says. ``risk-...`` belongs to tests of VaR and ES together, which cannot tell the two apart."""
 

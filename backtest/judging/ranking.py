@@ -1,6 +1,6 @@
 """Which is better: the difference of two models' scores on the days they share."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -69,24 +69,37 @@ def shared_days(*samples: Sample) -> list[Sample]:
     return [sample.on(np.isin(sample.dates, dates)) for sample in samples]
 
 
-def _diebold_mariano(ours: Sample, theirs: Sample, _: Settings) -> Answer:
+def compare_scores(ours: Sample, theirs: Sample) -> tuple[Answer, MeanDifference | None, Floats]:
+    """Return size and words that comparisons share (no p yet), the mean difference, and its series float64[T].
+
+    Both samples are on the same days. Negative differences favour ``ours``. Without a p to be had the difference is
+    None and the answer says what is missing.
+    """
     if ours.days < 2:
-        return Answer(used=ours, missing=f"needs 2 shared days, has {ours.days}")
+        return Answer(used=ours, missing=f"needs 2 shared days, has {ours.days}"), None, np.empty(0)
     scored = score_together([ours, theirs])
-    found = mean_difference(scored.scores[0] - scored.scores[1])
+    series = scored.scores[0] - scored.scores[1]
+    found = mean_difference(series)
     better = found.mean < 0.0
     direction = ("lower" if better else "higher") + f" {scored.name} score than {theirs.model}"
     unit = "in the unit of the P&L" if scored.name == "tick" else "no unit"
     notes = [f"size: mean difference of the {scored.name} score ({unit}), negative favours this model", scored.note,
              f"exceptions on shared days {ours.exceptions} against {theirs.exceptions}",
              f"Newey-West lag {newey_west_lag(ours.days)}"]  # fmt: skip
-    return Answer(
-        used=ours, statistic=found.statistic, p_value=found.p_value,
-        estimate=found.mean, low=found.low, high=found.high,
-        law=None if found.p_value is None else "asymptotic", evidence="better" if better else "worse",
+    answer = Answer(
+        used=ours, estimate=found.mean, low=found.low, high=found.high, evidence="better" if better else "worse",
         direction=direction if found.mean else "the same score", notes=tuple(n for n in notes if n),
-        missing="" if found.p_value is not None else "needs score differences that vary",
     )  # fmt: skip
+    if found.p_value is None:
+        return replace(answer, missing="needs score differences that vary"), None, series
+    return answer, found, series
+
+
+def _diebold_mariano(ours: Sample, theirs: Sample, _: Settings) -> Answer:
+    answer, found, _series = compare_scores(ours, theirs)
+    if found is None:
+        return answer
+    return replace(answer, statistic=found.statistic, p_value=found.p_value, law="asymptotic")
 
 
 TESTS = (

@@ -1,4 +1,4 @@
-"""Scores of forecasts, lower is better: tick for VaR, FZ0 for VaR and ES together."""
+"""Scores of forecasts, lower is better: tick for VaR, FZ0 and the half-homogeneous score for VaR and ES together."""
 
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -22,6 +22,15 @@ def fz0(losses: Floats, var: Floats, es: Floats, level: float) -> Floats:
     Needs e > 0 and e >= v on every day. Source: Patton, Ziegel and Chen (2019), J. Econometrics 211, eq. 6.
     """
     return np.asarray(np.maximum(losses - var, 0.0) / ((1.0 - level) * es) + var / es - 1.0 + np.log(es))
+
+
+def half_homogeneous(losses: Floats, var: Floats, es: Floats, level: float) -> Floats:
+    """Return ((L - v)+ + (1 - level)(e + v))/(2 sqrt(e)) of each day, in the root of the losses' unit: float64[T].
+
+    Needs e > 0 on every day. Source: Fissler and Ziegel (2016) with G1 = 0 and g2(e) = sqrt(e), in the loss form of
+    Nolde and Ziegel (2017).
+    """
+    return np.asarray((np.maximum(losses - var, 0.0) + (1.0 - level) * (es + var)) / (2.0 * np.sqrt(es)))
 
 
 @dataclass(frozen=True)

@@ -8,33 +8,20 @@ too, where it may be evidence of VaR or ES too high; its p is therefore twice th
 ``binomial``, and the one-sided p for too low, P(Z* <= Z), stands in the note.
 """
 
-from collections.abc import Iterator
 from dataclasses import replace
 
 import numpy as np
 import numpy.typing as npt
 
 from backtest.judging.answers import Answer, SampleTest, Settings
-from backtest.judging.multiples import sufficient_es_multiple
-from backtest.judging.nulls import (
-    ASSUMED_SHAPE,
-    OTHER_SHAPES,
-    exceedances,
-    excess_blocks,
-    excess_of_mean_one,
-    excesses_of_shape,
-    generator,
-    p_doubled,
-    p_lower,
-    p_upper,
-)
+from backtest.judging.es_samples import assumption, of_size, shapes_or, simulated_excesses, usable
+from backtest.judging.nulls import ASSUMED_SHAPE, excess_blocks, generator, p_doubled, p_lower, p_upper
 from backtest.judging.phrases import p_text
 from backtest.judging.samples import Sample
 
 Floats = npt.NDArray[np.float64]
 
 FEWEST_EXCEPTIONS = 5
-_UNUSABLE_SHARE = 0.05
 _DRAWS_AT_ONCE = 2_000_000
 
 
@@ -99,67 +86,18 @@ def z2_null(sample: Sample, shapes: Floats | float, settings: Settings) -> Float
 
     shapes: the GPD shape, one for all days or float64[T]; every day needs ES > VaR and ES > 0.
     """
-    where = (settings.seed, sample.level, sample.days, settings.simulations)
-    drawn = exceedances(*where)
-    if isinstance(shapes, float):
-        excesses = excesses_of_shape(*where, shapes)
-    else:
-        excesses = excess_of_mean_one(drawn.exponentials, shapes[drawn.days])
+    drawn, excesses = simulated_excesses(sample, shapes, settings)
     # a simulated exception adds L*/ES = VaR/ES + (1 - VaR/ES) W, W of mean one
     ratio = sample.var / sample.es
     total = drawn.sums(np.ones(len(drawn.days)), ratio) + drawn.sums(excesses, 1.0 - ratio)
     return 1.0 - total / (sample.days * sample.nominal)
 
 
-def _usable(sample: Sample, *, sigma: bool) -> tuple[Sample, str, tuple[str, ...]]:
-    """Return the days a severity test can use, what is missing if it cannot be asked, and what was left out."""
-    for name in ("es", "sigma") if sigma else ("es",):
-        if np.all(np.isnan(getattr(sample, name))):
-            return sample, f"needs {name}", ()
-    known = sample.on(~np.isnan(sample.es) & ~(sigma & np.isnan(sample.sigma)))
-    if known.days == 0:
-        return sample, "needs es and sigma on the same days", ()
-    good = (known.es > known.var) & (known.es > 0.0) & ~(known.shape >= 1.0) & ~(sigma & (known.sigma <= 0.0))
-    used, bad = known.on(good), int(np.count_nonzero(~good))
-    what = "positive ES above VaR" + (", sigma above 0" if sigma else "")
-    if bad > _UNUSABLE_SHARE * known.days:
-        return used, f"needs {what} (and a tail shape below 1), {bad} of {known.days} days are not so", ()
-    notes = (f"{sample.days - known.days} days without {'ES or sigma' if sigma else 'ES'} left out",) * (
-        known.days < sample.days
-    )
-    return used, "", notes + (f"{bad} days without {what} left out",) * (bad > 0)
-
-
-def _of_size(used: Sample, settings: Settings) -> Answer:
-    """Return the effect size both tests share: the multiple of the ES that would have sufficed."""
-    size = sufficient_es_multiple(used.losses, used.es, used.level, settings.seed)
-    # Never "too high": the bootstrap's upper end is too low where few losses lie beyond the VaR.
-    direction = "ES too low" if size.low is not None and size.low > 1.0 else ""
-    return Answer(
-        used=used, estimate=size.estimate, low=size.low, high=size.high, direction=direction,
-        notes=("size: the multiple of this ES that would have sufficed",),
-    )  # fmt: skip
-
-
-def _shapes(used: Sample, assumed: float) -> Floats | float:
-    """Return the forecast's shapes, the assumed one where it has none; one number where no day has its own."""
-    lacking = np.isnan(used.shape)
-    return assumed if lacking.all() else np.where(lacking, assumed, used.shape)
-
-
-def _assumption(used: Sample, others: Iterator[float]) -> tuple[str, ...]:
-    lacking = int(np.count_nonzero(np.isnan(used.shape)))
-    if not lacking:
-        return ("excesses simulated with the forecast's own GPD shape",)
-    beside = ", ".join(f"{p_text(p)} at shape {shape:g}" for shape, p in zip(OTHER_SHAPES, others, strict=True))
-    return (f"GPD shape {ASSUMED_SHAPE:g} assumed on {lacking} of {used.days} days; p {beside}",)
-
-
 def _mcneil_frey(sample: Sample, settings: Settings) -> Answer:
-    used, missing, notes = _usable(sample, sigma=True)
+    used, missing, notes = usable(sample, sigma=True)
     if missing:
         return Answer(missing=missing)
-    size, n = _of_size(used, settings), used.exceptions
+    size, n = of_size(used, settings), used.exceptions
     tail = used.on(used.hits)
     residuals = (tail.losses - tail.es) / tail.sigma
     statistic = residual_statistic(residuals) if n > 1 else np.nan
@@ -178,7 +116,7 @@ def _mcneil_frey_p(
     scales = (tail.es - tail.var) / tail.sigma
 
     def p_at(assumed: float) -> float:
-        shapes = np.broadcast_to(_shapes(tail, assumed), scales.shape)
+        shapes = np.broadcast_to(shapes_or(tail, assumed), scales.shape)
         return p_upper(residual_null(scales, shapes, used.level, used.days, settings), observed)
 
     rng = generator(settings.seed, "residual bootstrap", used.level, used.days)
@@ -187,27 +125,27 @@ def _mcneil_frey_p(
         *answer.notes,
         "one-sided: large means ES too low",
         boot,
-        *_assumption(tail, map(p_at, OTHER_SHAPES)),
+        *assumption(tail, p_at),
         *notes,
     )
     return replace(answer, p_value=p_at(ASSUMED_SHAPE), law="simulated", notes=said)
 
 
 def _acerbi_szekely_2(sample: Sample, settings: Settings) -> Answer:
-    used, missing, notes = _usable(sample, sigma=False)
+    used, missing, notes = usable(sample)
     if missing:
         return Answer(missing=missing)
     observed = z2(used.losses, used.var, used.es, used.level)
-    null = z2_null(used, _shapes(used, ASSUMED_SHAPE), settings)
+    null = z2_null(used, shapes_or(used, ASSUMED_SHAPE), settings)
 
     def p_at(assumed: float) -> float:
-        return p_doubled(z2_null(used, _shapes(used, assumed), settings), observed)
+        return p_doubled(z2_null(used, shapes_or(used, assumed), settings), observed)
 
-    size = _of_size(used, settings)
+    size = of_size(used, settings)
     said = (
         *size.notes, "negative: ES understated; joint test of VaR and ES",
         f"p is twice the smaller tail; one-sided p for too low {p_text(p_lower(null, observed))}",
-        *_assumption(used, map(p_at, OTHER_SHAPES)), *notes,
+        *assumption(used, p_at), *notes,
     )  # fmt: skip
     side = "risk-low" if p_lower(null, observed) <= p_upper(null, observed) else "risk-high"
     p_value = p_doubled(null, observed)

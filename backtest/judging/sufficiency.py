@@ -11,9 +11,11 @@ from backtest.judging.samples import Days, Sample, Span, read_book
 from backtest.records import Result
 
 VAR_SOURCE = "quantile of loss/VaR with order-statistic limits (exact for independent days)"
-ES_SOURCE = "empirical ES of loss/ES, percentile bootstrap over days"
-ES_NOTE = "interval by bootstrap over days, too short with few losses beyond the VaR"
-"""Its coverage falls short at few exceedances, always on the reassuring side: it never says that ES is too high."""
+ES_SOURCE = "empirical ES of loss/ES, interval from the simulated law of a GPD tail of shape 0.15"
+ES_NOTE = (
+    "interval assumes independent days; measured coverage of 95%: 94 to 98% for normal to t5 losses, 93 to 95% for t3"
+)
+"""Measured at 250 to 2,500 days, 97.5 and 99%: tests/judging/test_es_interval.py. A heavier tail makes it too short."""
 _WRITTEN = {"var": "VaR", "es": "ES"}
 
 

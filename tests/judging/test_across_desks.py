@@ -41,7 +41,7 @@ def test_one_desk_alone_and_rows_without_p_are_left_empty():
     assert decided(0.001, None, 0.9) == [HOLM, "", NEITHER]
 
 
-def test_questions_models_and_spans_are_families_of_their_own():
+def test_another_test_changes_no_decision():
     rows = [result(desk="A", p_value=0.03), result(desk="B", p_value=0.9)]
     others = [result(desk=d, p_value=0.9, question=q, test="t") for d in "AB" for q in ("when", "how deep")]
     alone = with_decisions(rows, span_places(rows), 0.10)

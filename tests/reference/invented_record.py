@@ -11,6 +11,9 @@ import numpy as np
 import pandas as pd
 from scipy import stats
 
+from backtest.judging.criteria import Criteria, criteria_table
+from backtest.judging.four_cells import four_cells
+from backtest.judging.scoreboard import scoreboard
 from backtest.records import (
     BRIDGE_COLUMNS,
     FIT_COLUMNS,
@@ -28,6 +31,9 @@ MODELS = {"historical": 0.95, "conditional-evt": 1.15}
 LEVELS = (0.975, 0.99)
 KINDS = ("hypothetical", "actual")
 SPANS = (250, "all")
+NAMED = ("pnl", "forecasts", "results", "criteria", "exceptions", "bridge", "four_cells", "scoreboard", "remarks")
+"""Tables of a record in which desks and models stand by name."""
+HOUSE = Criteria(1.2, 1.2, "green", "no evidence", 250)
 DATES = pd.bdate_range("2023-09-11", periods=600).to_numpy().astype("datetime64[us]")
 
 
@@ -50,8 +56,11 @@ def invented_record(*, subject: bool = True, firm: bool = True, exceptions: bool
         forecasts=forecasts,
         fits=pd.DataFrame(columns=list(FIT_COLUMNS)).astype({"desk": "str", "status": "str"}),
         results=results_table(results),
+        criteria=criteria_table(results, HOUSE, subject=SUBJECT if subject else None),
         exceptions=_log(losses),
         bridge=_bridge(losses, steps) if bridge else pd.DataFrame(columns=list(BRIDGE_COLUMNS)),
+        four_cells=four_cells(pnl, forecasts, levels=LEVELS),
+        scoreboard=scoreboard(pnl, forecasts),
         paths=pd.DataFrame(columns=["desk", "model", "figure", "series", "x", "y", "low", "high"]),
         remarks=_remarks(),
     )
@@ -60,7 +69,18 @@ def invented_record(*, subject: bool = True, firm: bool = True, exceptions: bool
 def renamed(record: Record, names: dict[str, str]) -> Record:
     """Return the record with desks, models and texts renamed wherever they stand."""
     tables = {
-        t: getattr(record, t).replace(names) for t in ("pnl", "forecasts", "results", "exceptions", "bridge", "remarks")
+        t: getattr(record, t).replace(names)
+        for t in (
+            "pnl",
+            "forecasts",
+            "results",
+            "criteria",
+            "exceptions",
+            "bridge",
+            "four_cells",
+            "scoreboard",
+            "remarks",
+        )
     }
     return replace(record, manifest=_renamed(record.manifest, names), **tables)
 
@@ -242,7 +262,7 @@ def _manifest(forecasts: pd.DataFrame, subject: bool, firm: bool) -> dict[str, o
     review = {"subject": SUBJECT if subject else None, "firm": FIRM if firm else None, "days": list(SPANS)}
     lines = {"historical": ("none", "empirical"), "conditional-evt": ("garch", "gpd")}
     return {
-        "format": 1,
+        "format": 2,
         "program": "tailmark",
         "version": "0.1.0",
         "versions": {"python": "3.11.9", "numpy": "2.4.0"},
