@@ -131,6 +131,19 @@ def show(
         typer.echo(line)
 
 
+@app.command()
+def power(
+    days: Annotated[int, typer.Option("--days", help="Length of the review in business days.")] = 250,
+    level: Annotated[float, typer.Option("--level", help="Confidence of VaR and ES, as 0.99.")] = 0.99,
+    test: Annotated[
+        str | None, typer.Option("--test", metavar="KEY", help="One test, in words [default: all, as a table].")
+    ] = None,
+) -> None:
+    """Say in how many of 100 reviews of this length each test sees a model that is wrong in a named way."""
+    for line in pipeline.power(days, level, test):
+        typer.echo(line)
+
+
 def main() -> None:
     """Run the command line: the entry point of ``tailmark``."""
     try:

@@ -33,6 +33,15 @@ BRIDGE_COLUMNS = (
 CRITERIA_COLUMNS = (
     "desk", "criterion", "limit", "level", "pnl_kind", "from", "to", "days", "value", "low", "high", "answer", "note",
 )  # fmt: skip
+FOUR_CELLS_COLUMNS = (
+    "desk", "level", "pnl_kind", "part", "name", "filter", "tail", "from", "to", "days", "exceptions", "average_var",
+    "interval_days", "interval_width", "interval_percent", "interval_ratio", "score_name", "score", "gain", "low",
+    "high", "statistic", "p_value", "share", "share_low", "share_high", "decision", "note",
+)  # fmt: skip
+SCOREBOARD_COLUMNS = (
+    "desk", "model", "level", "pnl_kind", "from", "to", "days", "exceptions", "average_var", "average_change",
+    "peak_to_trough", "longest_run", "tick", "fz0", "half_homogeneous", "note",
+)  # fmt: skip
 REMARK_COLUMNS = ("rule", "source", "desk", "first", "last", "count", "text")
 
 REPORTED_STATUS = "as reported"
@@ -178,8 +187,11 @@ class Record:
     forecasts: pd.DataFrame
     fits: pd.DataFrame
     results: pd.DataFrame
+    criteria: pd.DataFrame
     exceptions: pd.DataFrame
     bridge: pd.DataFrame
+    four_cells: pd.DataFrame
+    scoreboard: pd.DataFrame
     paths: pd.DataFrame
     remarks: pd.DataFrame
 

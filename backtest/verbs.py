@@ -107,15 +107,18 @@ def judge(
     *,
     days: Sequence[int | str] = ("all",),
     significance: float = 0.05,
+    lagged_hits: int = 1,
 ) -> pd.DataFrame:
     """Judge forecasts against P&L: one row a desk x model x P&L kind x level x span x test (``results.csv``).
 
-    ``forecasts``: any table with ``date, desk, model, level, var`` and, where known, ``es, sigma, shape``; a test that
-    needs what is missing answers "not tested: needs ...". ``days``: spans in business days, or "all" days both share.
+    ``forecasts``: any table with ``date, desk, model, level, var`` and, where known, ``es, sigma, shape,
+    pit_hypothetical, pit_actual`` (``pit`` stands for the first); a test that needs what is missing answers "not
+    tested: needs ...". ``days``: spans in business days, or "all" days both share. ``lagged_hits``: lags of exceptions
+    in the dynamic quantile test.
     """
     table = pnl_table(pnl)
     known = latest_known(table, table["known_on"].max())
-    options: dict[str, Any] = {"spans": days, "seed": seed}
+    options: dict[str, Any] = {"spans": days, "seed": seed, "lagged_hits": lagged_hits}
     results = battery.judge_table(
         known, forecasts, tests=tests, significance=significance, simulations=simulations, **options
     )

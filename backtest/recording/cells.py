@@ -20,7 +20,7 @@ _GUARDED = tuple("=+-@\t\r'")
 _NUMBER_COLUMNS = frozenset(
     (
         "level", "days", "exceptions", "statistic", "p_value", "estimate", "low", "high", "could_see", "window",
-        "average_var", "average_change", "score", "score_change", "count",
+        "average_var", "average_change", "score", "score_change", "count", "value",
     )
 )  # fmt: skip
 """Columns that hold numbers even where a table has none to show."""

@@ -19,7 +19,7 @@ import pandas as pd
 from backtest.errors import RecordError
 from backtest.records import FALLBACK, REPORTED_STATUS, Source
 
-FORMAT = 1
+FORMAT = 2
 """Number of the run folder's format; a folder of another number is refused."""
 PROGRAM = "tailmark"
 _LIBRARIES = ("numpy", "scipy", "pandas", "numba")

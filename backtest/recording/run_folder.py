@@ -27,8 +27,11 @@ TABLES = {
     "forecasts": "forecasts.parquet",
     "fits": "fits.parquet",
     "results": "results.csv",
+    "criteria": "criteria.csv",
     "exceptions": "exceptions.csv",
     "bridge": "bridge.csv",
+    "four_cells": "four_cells.csv",
+    "scoreboard": "scoreboard.csv",
     "paths": "paths.parquet",
     "remarks": "data_remarks.csv",
 }
@@ -125,13 +128,14 @@ def read_record(folder: Path) -> Record:
     Raises RecordError (file, remedy) where it is none, has another format number, or a file is missing or not the
     one that the run wrote.
     """
-    manifest = _read_manifest(folder)
+    manifest = read_manifest(folder)
     files = cast(dict[str, dict[str, Any]], manifest["files"])
     tables = {table: _read_table(folder / name, files[name]) for table, name in TABLES.items()}
     return Record(manifest=manifest, **tables)
 
 
-def _read_manifest(folder: Path) -> dict[str, Any]:
+def read_manifest(folder: Path) -> dict[str, Any]:
+    """Read the manifest of a run folder; raises RecordError as ``read_record`` does."""
     place = folder / MANIFEST
     try:
         manifest = json.loads(place.read_bytes())

@@ -130,6 +130,11 @@ class Book:
         """Return the bridge of a desk, in recorded order."""
         return self._bridge.get((desk,), [])
 
+    def rows(self, table: str, desk: str) -> list[Row]:
+        """Return the rows of a desk in one of the record's other tables, in recorded order."""
+        kept = getattr(self.record, table)
+        return [{str(k): v for k, v in row.items()} for row in kept[kept["desk"] == desk].to_dict("records")]
+
     def _judged(self, desk: str, model: str) -> list[Row]:
         return [r for r in self.results(desk, model) if r["question"] != BY_RULE and r["days"] > 0]
 

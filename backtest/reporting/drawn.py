@@ -10,7 +10,6 @@ from backtest.reporting.facts import (
     Bridge,
     Count,
     Often,
-    Power,
     Rejection,
     RuleCount,
     Scope,
@@ -184,7 +183,8 @@ def size(book: Book, scope: Scope) -> Size:
     daily = daily[daily["loss"].notna()]
     var = _sufficient(book, scope, "VaR", "sufficient-var-multiple", daily["var"])
     es = _sufficient(book, scope, "ES", "sufficient-es-multiple", daily["es"])
-    return Size(scope, var, es if es.estimate is not None else None, rejections(book, scope, "how deep"))
+    more = rejections(book, scope, "how deep") + rejections(book, scope, "what shape")
+    return Size(scope, var, es if es.estimate is not None else None, more)
 
 
 def _sufficient(book: Book, scope: Scope, measure: str, test: str, values: "pd.Series[float]") -> Sufficient:
@@ -242,12 +242,3 @@ def _step(row: Row) -> Step:
         high=given(row["high"]),
         note=text(row["note"]),
     )
-
-
-def power(book: Book) -> Power | None:
-    """Draw the power of the count at this length; None where the run did not record it."""
-    kept = book.mapping("power")
-    if not kept or given(kept.get("power")) is None:
-        return None
-    level, nominal, true = (float(kept[k]) for k in ("level", "nominal_rate", "true_rate"))
-    return Power(level, nominal, true, int(kept["days"]), float(kept["power"]))

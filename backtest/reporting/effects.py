@@ -8,16 +8,42 @@ from backtest.reporting.book import Row, given, text
 TESTS = {
     "binomial": ("Exact binomial", "share"),
     "kupiec": ("Kupiec, share of failures", "share"),
+    "first-exception": ("Kupiec, day of the first exception", "share"),
+    "spectral-window": ("Gordy and McNeil, uniform window", "share"),
     "christoffersen-independence": ("Christoffersen, independence", "points"),
     "christoffersen-coverage": ("Christoffersen, coverage", "points"),
+    "dynamic-quantile": ("Dynamic quantile", "points"),
+    "ljung-box": ("Ljung and Box, exceptions", "points"),
+    "duration-weibull": ("Durations, Weibull", "points"),
+    "duration-gmm": ("Durations, GMM", "points"),
+    "du-escanciano-conditional": ("Du and Escanciano, depths", "points"),
     "mcneil-frey": ("McNeil and Frey, ES residuals", "multiple"),
+    "es-zones": ("ES zones", "multiple"),
+    "acerbi-szekely-1": ("Acerbi and Szekely, statistic 1", "multiple"),
     "acerbi-szekely-2": ("Acerbi and Szekely, statistic 2", "multiple"),
+    "acerbi-szekely-3": ("Acerbi and Szekely, statistic 3", "multiple"),
+    "acerbi-szekely-ridge": ("Acerbi and Szekely, minimally biased", "multiple"),
+    "nolde-ziegel-one-sided": ("Nolde and Ziegel, one-sided", "multiple"),
+    "nolde-ziegel-two-sided": ("Nolde and Ziegel, two-sided", "multiple"),
+    "nolde-ziegel-general": ("Nolde and Ziegel, ES residuals", "multiple"),
+    "bayer-dimitriadis-intercept": ("Bayer and Dimitriadis, intercept", "multiple"),
+    "bayer-dimitriadis-auxiliary": ("Bayer and Dimitriadis, regression", "multiple"),
+    "multinomial-nass": ("Multinomial, Nass", "number"),
+    "berkowitz": ("Berkowitz, all days", "deviation"),
+    "berkowitz-tail": ("Berkowitz, tail", "multiple"),
+    "spectral-probit": ("Gordy and McNeil, probit scores", "multiple"),
     "diebold-mariano": ("Diebold and Mariano, scores", "score"),
+    "giacomini-white": ("Giacomini and White, scores", "score"),
+    "three-zone": ("Nolde and Ziegel, three zones", "score"),
+    "confidence-set": ("Model confidence set", "score"),
+    "e-process": ("Running evidence", "capital"),
     "basel-zone": ("Zone by rule", "multiplier"),
     "sufficient-var-multiple": ("sufficient multiple of VaR", "multiple"),
     "sufficient-es-multiple": ("sufficient multiple of ES", "multiple"),
 }
 """Readable name of a test and the unit of its estimate; a test that is not listed shows its key and a plain number."""
+VAST = 1e6
+"""Capital of the running evidence above which only this is said."""
 TICK, NO_UNIT = "tick", "no unit"
 _UNITS: dict[str, Callable[[float], str]] = {
     "share": say.percent,
@@ -25,6 +51,10 @@ _UNITS: dict[str, Callable[[float], str]] = {
     "number": say.number,
     "multiple": lambda value: f"{say.multiple(value)} times",
     "multiplier": say.multiple,
+    "deviation": lambda value: f"deviation {say.multiple(value)}",
+    "capital": lambda value: (
+        f"{say.number(value, 3)} times the start" if value < VAST else "over a million times the start"
+    ),
 }
 
 
@@ -46,12 +76,18 @@ def estimate(row: Row, currency: str) -> str:
         return f"{show(value)} [{say.interval(low, high)}]"
     if low is None or high is None:
         return show(value)
-    return f"{show(value)} [{show(low).removesuffix(' points')} to {show(high).removesuffix(' points')}]"
+    ends = [show(end).removesuffix(" points").removeprefix("deviation ") for end in (low, high)]
+    return f"{show(value)} [{ends[0]} to {ends[1]}]"
 
 
 def score_amount(value: float, money: bool, currency: str) -> str:
     """Return a difference of scores: in money where the score is in the unit of the P&L, else a plain number."""
     return say.money(value, currency) if money else say.number(value, 3)
+
+
+def mean_score(value: float, money: bool, currency: str) -> str:
+    """Return a mean score: in money where the score is in the unit of the P&L, else with three decimals."""
+    return say.money(value, currency) if money else f"{value:,.3f}".replace("-", say.MINUS)
 
 
 def _score(row: Row, value: float, low: float | None, high: float | None, currency: str) -> str:

@@ -146,6 +146,33 @@ class Bridge:
 
 
 @dataclass(frozen=True)
+class Gain:
+    """How much the mean score falls (above 0: better), and its share in percent of what filter and tail gain."""
+
+    gain: float
+    low: float | None
+    high: float | None
+    share: float | None
+    share_low: float | None
+    share_high: float | None
+    decision: str
+
+
+@dataclass(frozen=True)
+class Parts:
+    """What the filter, the tail and both gain over neither, at one level over shared days; ``decided``: with a p."""
+
+    level: float
+    days: int
+    score_name: str
+    currency: str
+    filter: Gain
+    tail: Gain
+    both: Gain
+    decided: bool
+
+
+@dataclass(frozen=True)
 class Power:
     """The power of the one-sided exact binomial test at the length of this review."""
 
@@ -157,14 +184,28 @@ class Power:
 
 
 @dataclass(frozen=True)
+class Hardly:
+    """Results without evidence whose test could hardly have seen it: how many; each test's lowest and highest power."""
+
+    model: str
+    results: int
+    tests: tuple[tuple[str, float, float], ...]
+
+
+@dataclass(frozen=True)
 class DeskCounts:
-    """Desks whose count is rejected at ``level``, of ``desks`` with a p-value; how many chance gives at most."""
+    """Desks whose count is rejected at ``level``, of ``desks`` with a p-value; how many chance gives at most.
+
+    ``holm`` and ``step_up``: desks whose rejection survives being picked out of all, strictly and less so.
+    """
 
     level: float
     rejected: tuple[str, ...]
     too_high: tuple[str, ...]
     desks: int
     by_chance: float
+    holm: tuple[str, ...] = ()
+    step_up: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)

@@ -8,6 +8,8 @@ from backtest.reporting.book import Book, given, text
 from backtest.reporting.drawn import scope_at
 from backtest.reporting.facts import DeskCounts, Person, Scope
 
+HOLM, STEP_UP = "rejected by Holm", "rejected by Benjamini-Hochberg"
+"""Words of ``decision_across_desks``; what Holm rejects, Benjamini-Hochberg rejects too."""
 NAMED = 5
 """Desks named in a sentence before it only counts them."""
 
@@ -29,7 +31,7 @@ def person(book: Book, scope: Scope) -> Person:
         unforecast=without,
         short=tuple((d, n) for d, n in _short(book) if scope.is_subject or d not in without),
         flagged=flagged(book),
-        counts=_desk_counts(book, scope),
+        counts=desk_counts(book, scope),
     )
 
 
@@ -43,7 +45,7 @@ def flagged(book: Book) -> tuple[tuple[str, int], ...]:
     return tuple(sorted(found.items(), key=lambda item: (-item[1], item[0])))
 
 
-def _desk_counts(book: Book, scope: Scope) -> DeskCounts | None:
+def desk_counts(book: Book, scope: Scope) -> DeskCounts | None:
     """Draw on which desks the count is rejected; None where there are not several desks to choose from."""
     rows = {}
     for desk in book.desks:
@@ -55,7 +57,11 @@ def _desk_counts(book: Book, scope: Scope) -> DeskCounts | None:
         return None
     rejected = tuple(d for d, r in rows.items() if r["decision"] == "rejected")
     high = tuple(d for d in rejected if "too high" in text(rows[d]["phrase"]))
-    return DeskCounts(scope.count_level, rejected, high, len(rows), scope.significance * len(rows))
+    across = {d: text(r["decision_across_desks"]) for d, r in rows.items()}
+    holm, step_up = (tuple(d for d, words in across.items() if words == wanted) for wanted in (HOLM, STEP_UP))
+    return DeskCounts(
+        scope.count_level, rejected, high, len(rows), scope.significance * len(rows), holm, (*holm, *step_up)
+    )
 
 
 def _short(book: Book) -> tuple[tuple[str, int], ...]:
@@ -87,7 +93,7 @@ def needs_person(facts: Person) -> str:
             for name, n in facts.short
         ]
         parts.append(f"judged on less than was asked for: {say.listed(short)}")
-    return "; ".join(p for p in parts if p) + ". The opinion is a person's to give; none is given here."
+    return "; ".join(p for p in parts if p) + ". The opinion is a person's to give."
 
 
 def _fallbacks(facts: Person) -> str:

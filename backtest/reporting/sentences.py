@@ -6,18 +6,19 @@ from dataclasses import dataclass
 from backtest.records import Record
 from backtest.reporting import wording as say
 from backtest.reporting.book import Book
-from backtest.reporting.drawn import main_bridge, often, other_bridges, power, scope_of, size, when
+from backtest.reporting.drawn import main_bridge, often, other_bridges, scope_of, size, when
 from backtest.reporting.effects import test_name
-from backtest.reporting.facts import Count, Often, Power, Rejection, RuleCount, Scope, Size, Sufficient, When
+from backtest.reporting.facts import Count, Often, Rejection, RuleCount, Scope, Size, Sufficient, When
 from backtest.reporting.open_points import needs_person, person
+from backtest.reporting.parts import main_parts
 from backtest.reporting.prose import prose
 from backtest.reporting.steps import why
+from backtest.reporting.unseen import hardly, power, unseen
 
 QUESTIONS = (
     "How often?", "When?", "By how much?", "Why?", "What could this review not see?", "What needs a person?",
 )  # fmt: skip
 POSITIONS = "Challengers learn from past P&L (or vectors); the reported VaR from current positions."
-CAPITAL_ES = "The ten-day stressed ES used for capital was not tested."
 JOINT = "christoffersen-coverage"
 BUNCHED = 0.8
 """Exceptions are said to be bunched where they take less than this share of what even spacing would take."""
@@ -48,8 +49,8 @@ def sentences(book: Book) -> tuple[Sentence, ...]:
             how_often(counts),
             when_they_fell(when(book, scope)),
             by_how_much(size(book, scope)),
-            why(main_bridge(book, scope), other_bridges(book, scope)),
-            unseen(power(book), scope.is_subject and any(c.p is not None for c in counts.counts)),
+            why(main_bridge(book, scope), other_bridges(book, scope), main_parts(book, scope)),
+            unseen(power(book), scope.is_subject and any(c.p is not None for c in counts.counts), hardly(book, scope)),
             needs_person(person(book, scope)),
         )
     return tuple(Sentence(q, a) for q, a in zip(QUESTIONS, answers, strict=True))
@@ -176,8 +177,8 @@ def when_they_fell(facts: When) -> str:
 
 def _together(facts: When) -> str:
     """Say what else rejects: independence elsewhere, then rate and independence tested together."""
-    joint = [r for r in facts.more if r.test == JOINT]
-    alone = _more([r for r in facts.more if r.test != JOINT], facts.scope)
+    joint = [r for r in facts.more if r.test == JOINT or "VaR is too" in r.phrase]
+    alone = _more([r for r in facts.more if r not in joint], facts.scope)
     said = _more(joint, facts.scope)
     return " ".join(p for p in (alone, f"Together with the count: {said[0].lower()}{said[1:]}" if said else "") if p)
 
@@ -199,8 +200,8 @@ def by_how_much(facts: Size) -> str:
         parts.append(_sufficient(es, scope, "" if es.days == var.days else f" ({say.plural(es.days, 'day')})"))
     if var.estimate is not None:
         parts.append("The VaR interval is 95%, if days were independent.")
-    if es:
-        parts.append("The ES interval is a 95% bootstrap over days and too short with few losses beyond the VaR.")
+    if es and es.note:
+        parts.append(f"The ES interval is 95% ({prose(es.note).removeprefix('interval ')}).")
     return " ".join(p for p in (*parts, _more(facts.more, scope)) if p)
 
 
@@ -228,15 +229,3 @@ def _holds_one(facts: Sufficient) -> str:
     if apart or (facts.low is None and facts.high is None):
         return ""
     return "; the interval holds 1, the size reported"
-
-
-def unseen(facts: Power | None, beside_p: bool) -> str:
-    """Say what a review of this length cannot see, and what was not tested; ``beside_p``: sentence 1 has a p-value."""
-    if facts is None:
-        return f"The power of the count was not computed. {CAPITAL_ES}"
-    other = "; the two-sided p of sentence 1 sees less" if beside_p else ""
-    return (
-        f"A {say.level(facts.level)} VaR whose true coverage is {say.level(1 - facts.true_rate)} is caught in "
-        f"{say.in_hundred(facts.power)} reviews of {say.plural(facts.days, 'day')} (one-sided exact binomial at 5%, "
-        f"days independent{other}). {CAPITAL_ES}"
-    )

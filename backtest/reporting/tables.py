@@ -25,6 +25,15 @@ class Table:
     links: tuple[str, ...] = ()
 
 
+@dataclass(frozen=True)
+class Fact:
+    """A label and what stands beside it; ``zone`` is the rule's colour word where the text is a rule's zone."""
+
+    label: str
+    text: str
+    zone: str = ""
+
+
 def table(
     caption: str, header: Iterable[str], rows: Iterable[Sequence[str]], numeric: Iterable[str] = (), note: str = ""
 ) -> Table:
@@ -105,16 +114,15 @@ def p_cell(row: Row | None, book: Book) -> str:
     return say.DASH if p is None else say.p_cell(p, book.significance)
 
 
-_COMPACT = (
-    ("binomial", "Binomial p"),
-    ("christoffersen-independence", "Independence p"),
-    ("mcneil-frey", "McNeil-Frey p"),
-    ("acerbi-szekely-2", "Acerbi-Szekely p"),
+Column = tuple[tuple[str, str], ...]
+_COMPACT: tuple[Column, ...] = (
+    (("binomial", "Count p"),),
+    (("dynamic-quantile", "Dynamic quantile p"), ("christoffersen-independence", "Independence p")),
+    (("es-zones", "ES zones p"), ("acerbi-szekely-2", "Acerbi-Szekely p"), ("mcneil-frey", "McNeil-Frey p")),
+    (("berkowitz-tail", "Tail p"),),
 )
-_COMPACT_HEADER = (
-    "Model", "Level", "Days", "Exceptions (expected)", *(name for _, name in _COMPACT), "VaR multiple [95%]",
-    "Score beside the reference [95%]",
-)  # fmt: skip
+"""A column of p-values a question (how often, when, how deep, what shape): of its tests the first that was asked."""
+_BEFORE, _SIZE, _SCORE = ("Model", "Level", "Days", "Exceptions (expected)"), "VaR multiple [95%]", "Score [95%]"
 
 
 def challenger_tables(book: Book, desk: str) -> tuple[Table, ...]:
@@ -122,30 +130,61 @@ def challenger_tables(book: Book, desk: str) -> tuple[Table, ...]:
     tables: list[Table] = []
     for which, words in ((book.main_span, "the latest days"), (book.longest_span, "all days")):
         spans = {m: span for m in book.models if (span := which(desk, m)) is not None}
-        rows = [_compact(book, desk, m, s, level) for m, s in spans.items() for level in book.levels(desk, m)]
-        shown = tuple(r for r in rows if r)
-        if shown and not any(t.rows == shown for t in tables):
+        asked = [_asked(book, desk, m, s, level) for m, s in spans.items() for level in book.levels(desk, m)]
+        asked = [found for found in asked if found]
+        if asked:
             first, last = min(s.first for s in spans.values()), max(s.last for s in spans.values())
-            caption = f"Challengers over {words}, {first} to {last}, hypothetical P&L"
-            tables.append(table(caption, _COMPACT_HEADER, shown, _COMPACT_HEADER[1:8]))
+            made = _challengers(book, asked, f"Challengers over {words}, {first} to {last}, hypothetical P&L")
+            if not any(t.rows == made.rows for t in tables):
+                tables.append(made)
     return tuple(tables)
 
 
-def _compact(book: Book, desk: str, model: str, span: Span, level: float) -> tuple[str, ...]:
+Asked = dict[str, Row]
+"""The results of one model, level and span by test."""
+
+
+def _asked(book: Book, desk: str, model: str, span: Span, level: float) -> Asked:
     kind = book.kinds(desk, model)[0]
-    count = book.result("binomial", desk, model, span, kind, level)
-    ps = [p_cell(book.result(test, desk, model, span, kind, level), book) for test, _ in _COMPACT]
-    size = book.result("sufficient-var-multiple", desk, model, span, kind, level)
-    score = book.result("diebold-mariano", desk, model, span, kind, level)
-    days = say.whole(span.days if count is None else count["days"])
+    return {r["test"]: r for r in book.results(desk, model, pnl_kind=kind, level=level, place=span.place)}
+
+
+def _challengers(book: Book, asked: list[Asked], caption: str) -> Table:
+    """Return the table of some models and levels; a question that was asked of none of them has no column."""
+    columns = [tests for tests in _COMPACT if any(test in found for test, _ in tests for found in asked)]
+    headers, note = [], ""
+    for tests in columns:
+        used = {name: [f for f in asked if _first(tests, f) == test] for test, name in tests}
+        names = [name for name, rows in used.items() if rows]
+        headers.append(names[0] if len(names) == 1 else f"{names[0].removesuffix(' p')}, else other, p")
+        others = [f"{name} of {say.listed(_models_of(used[name]), 20)}" for name in names[1:]]
+        note += f" In that column {say.listed(others)}." if others else ""
+    header = (*_BEFORE, *headers, _SIZE, _SCORE)
+    rows = [_compact(book, found, columns) for found in asked]
+    note = f"Score: beside the reference, below 0 favours the challenger.{note}"
+    return table(caption, header, rows, header[1:-2], note)
+
+
+def _models_of(rows: list[Asked]) -> list[str]:
+    return list(dict.fromkeys(say.name(str(next(iter(found.values()))["model"])) for found in rows))
+
+
+def _first(tests: Column, found: Asked) -> str:
+    return next((test for test, _ in tests if test in found), "")
+
+
+def _compact(book: Book, found: Asked, columns: list[Column]) -> tuple[str, ...]:
+    any_row, count = next(iter(found.values())), found.get("binomial")
+    size = found.get("sufficient-var-multiple")
+    days = max(r["days"] for r in found.values()) if count is None else count["days"]
     return (
-        model,
-        say.level(level),
-        days,
+        str(any_row["model"]),
+        say.level(any_row["level"]),
+        say.whole(days),
         exceptions_cell(count),
-        *ps,
+        *(p_cell(found.get(_first(tests, found)), book) for tests in columns),
         estimate(size, book.currency) if size else say.DASH,
-        _score(score, book),
+        _score(found.get("diebold-mariano"), book),
     )
 
 
@@ -158,7 +197,7 @@ def _score(row: Row | None, book: Book) -> str:
 
 
 BRIDGE_HEADER = (
-    "Step", "Model", "Window", "Exceptions", "Average VaR", "Average daily change", "Score change [95%]", "Remark",
+    "Step", "Model", "Window", "Exceptions", "Average VaR", "Daily change", "Score change [95%]", "Remark",
 )  # fmt: skip
 
 

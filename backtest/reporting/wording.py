@@ -89,13 +89,13 @@ def whole(count: float | np.integer) -> str:
 
 
 def number(value: float, figures: int = 4) -> str:
-    """Return a plain number with that many significant figures; thousands separated, powers of ten only where tiny."""
+    """Return a plain number with that many significant figures; thousands separated, powers of ten only far from 1."""
     if math.isinf(value):
         return "infinite" if value > 0 else f"{MINUS}infinite"
     if value == 0:
         return "0"
     places = max(figures - 1 - math.floor(math.log10(abs(value))), 0)
-    text = f"{value:,.{places}f}" if places <= 8 else f"{value:.{figures - 1}e}"
+    text = f"{value:,.{places}f}" if places <= 8 and abs(value) < 1e15 else f"{value:.{figures - 1}e}"
     if "." in text and "e" not in text:
         text = text.rstrip("0").rstrip(".")
     return text.replace("-", MINUS)

@@ -8,7 +8,7 @@ import pandas as pd
 import pytest
 
 from backtest.errors import RecordError
-from backtest.recording.manifest import count_fallbacks, is_fallback, make_manifest, manifest_text, plain, run_id
+from backtest.recording.manifest import FORMAT, count_fallbacks, is_fallback, make_manifest, manifest_text, plain, run_id
 from backtest.records import REPORTED_STATUS, Source
 
 NINE = dt.datetime(2026, 1, 5, 9, 0, tzinfo=dt.timezone(dt.timedelta(hours=1)))
@@ -42,7 +42,7 @@ def made(**changes):
 
 def test_the_manifest_says_what_went_in_and_with_what():
     manifest = made()
-    assert manifest["format"] == 1
+    assert manifest["format"] == FORMAT
     assert manifest["inputs"] == [{"role": "pnl", "name": "pnl.csv", "sha256": "ab" * 32, "rows": 12}]
     assert manifest["study"] == {"title": "Invented", "seed": 7, "review": {"days": [250, "all"]}}
     assert manifest["versions"]["python"] == platform.python_version()

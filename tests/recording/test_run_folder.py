@@ -196,11 +196,11 @@ def test_an_unknown_format_is_refused_with_its_number(record, tmp_path):
     folder = write_record(record, tmp_path / "run")
     manifest = json.loads((folder / "manifest.json").read_text(encoding="utf-8"))
     (folder / "manifest.json").write_text(json.dumps(manifest | {"format": 99}), encoding="utf-8")
-    with pytest.raises(RecordError, match=r"unknown format number, found 99.*reads format 1"):
+    with pytest.raises(RecordError, match=r"unknown format number, found 99.*reads format 2"):
         read_record(folder)
 
 
-@pytest.mark.parametrize("content", ["{", '{"program": "tailmark", "format": 1}', "[]"])
+@pytest.mark.parametrize("content", ["{", '{"program": "tailmark", "format": 2}', "[]"])
 def test_a_garbled_manifest_is_refused(record, tmp_path, content):
     folder = write_record(record, tmp_path / "run")
     (folder / "manifest.json").write_text(content, encoding="utf-8")

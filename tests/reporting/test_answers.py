@@ -2,8 +2,11 @@ from dataclasses import replace
 
 import pytest
 
+from backtest.judging.battery import TESTS as BATTERY
 from backtest.judging.sufficiency import ES_NOTE
-from backtest.reporting.prose import BOOTSTRAP
+from backtest.reporting.effects import TESTS, estimate
+from backtest.reporting.prose import prose
+from backtest.reporting.sentences import six_sentences
 from backtest.reporting.view import summary_view
 from tests.reference.invented_record import FIRM, SUBJECT, invented_record
 
@@ -119,5 +122,70 @@ def test_a_named_rule_that_was_not_applied_is_a_fact_of_the_first_page():
     ]
 
 
-def test_the_label_of_the_bootstrap_is_the_one_judging_writes():
-    assert BOOTSTRAP == ES_NOTE  # two rooms, which do not import each other
+def test_what_judging_says_of_the_es_interval_stands_in_the_sentence_and_below_the_table(record):
+    made = changed(record, "sufficient-es-multiple", note=ES_NOTE)
+    words = ES_NOTE.removeprefix("interval ")
+    assert f"The ES interval is 95% ({words})." in six_sentences(made)[2]
+    firm = next(d for d in summary_view(made).desks if d.name == FIRM)
+    assert f"sufficient multiple of ES: {ES_NOTE}." in firm.results[0].note
+
+
+def test_every_test_of_the_battery_has_a_name_and_a_unit():
+    assert set(BATTERY) <= set(TESTS)
+    assert len({name for name, _ in TESTS.values()}) == len(TESTS)
+    assert all(name != key for key, (name, _) in TESTS.items())
+
+
+@pytest.mark.parametrize(
+    ("test", "value", "low", "high", "words"),
+    [
+        ("first-exception", 0.0625, 0.0016, 0.218, "6.2% [0.16% to 21.8%]"),
+        ("dynamic-quantile", 14.4, 0.96, 44.0, "14.4 points [1.0 to 44.0]"),
+        ("es-zones", 1.25, 1.02, 2.05, "1.25 times [1.02 to 2.05]"),
+        ("berkowitz-tail", 1.25, 0.98, None, "1.25 times [at least 0.98; no upper limit at this length]"),
+        ("berkowitz", 1.19, 1.096, 1.307, "deviation 1.19 [1.10 to 1.31]"),
+        ("e-process", 6.2161, None, None, "6.22 times the start"),
+        ("e-process", 1e300, None, None, "over a million times the start"),
+        ("multinomial-nass", None, None, None, "–"),
+    ],
+)
+def test_an_estimate_carries_its_unit(test, value, low, high, words):
+    row = {"test": test, "estimate": value, "low": low, "high": high, "direction": "", "note": ""}
+    assert estimate(row, "EUR") == words
+
+
+@pytest.mark.parametrize(
+    ("note", "words"),
+    [
+        ("needs historical, conditional-evt at 0.975", "needs historical, conditional-evt at 97.5%"),
+        ("p 0.02 at shape 0, 0.002 at shape 0.3", "p 0.02 at shape 0, 0.002 at shape 0.3"),
+        ("power at 250 days against: sigma understated by 20%", "power at 250 days against sigma understated by 20%"),
+        ("needs pit on 10 days below VaR, has 3", "needs a PIT on 10 days below VaR, has 3"),
+        ("of the exceptions only (L - ES)/sigma enters", "of the exceptions only the loss less ES, over sigma, enters"),
+    ],
+)
+def test_what_judging_writes_reads_as_words(note, words):
+    assert prose(note) == words
+
+
+def test_a_note_is_not_cut_inside_its_brackets(record):
+    note = "zone green: red from 6 (95% and 99.99%; informational, not a rule); joint test"
+    table = record.results.copy()
+    rows = (table["test"] == "binomial") & (table["level"] == 0.99)
+    table.loc[rows, "note"] = note
+    firm = next(d for d in summary_view(replace(record, results=table)).desks if d.name == FIRM)
+    assert f"at 99%: {note}." in firm.results[0].note
+
+
+def test_what_several_tests_say_is_said_once(record):
+    table = record.results.copy()
+    table.loc[table["test"].isin(["binomial", "mcneil-frey"]) & (table["desk"] == FIRM), "note"] = "alike; in both"
+    firm = next(d for d in summary_view(replace(record, results=table)).desks if d.name == FIRM)
+    assert firm.results[0].note == "Exact binomial; McNeil and Frey, ES residuals: alike; in both."
+
+
+def test_the_power_beside_a_tail_too_heavy_is_said_to_be_against_one_too_thin(record):
+    made = changed(record, "binomial", phrase="evidence that the tail is too heavy")
+    assert answers(made, "Exact binomial") == {
+        "evidence that the tail is too heavy (power against a tail too thin 40 in 100)"
+    }

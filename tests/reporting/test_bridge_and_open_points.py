@@ -23,10 +23,9 @@ def test_why_names_every_step_its_gain_and_its_price():
     assert why(BRIDGE) == (
         "Over 1,860 shared days at 99% (18.6 exceptions expected): reported 28 exceptions at an average VaR "
         "of EUR 3.21 m; "
-        "longer window 21 at EUR 3.99 m; plus filter 19 at EUR 3.18 m; plus tail 20 at EUR 3.07 m. Step by step, score "
-        "better beyond chance: plus filter; score worse beyond chance: plus tail; cannot be told from no "
-        "change: longer "
-        "window. From day to day the last step's VaR moves 12 times as much as the first's."
+        "longer window 21 at EUR 3.99 m; plus filter 19 at EUR 3.18 m; plus tail 20 at EUR 3.07 m. Step by step, "
+        "by the FZ0 score, better beyond chance: plus filter; worse beyond chance: plus tail; cannot be "
+        "told from no change: longer window. From day to day the last step's VaR moves 12 times as much as the first's."
     )
 
 
@@ -52,8 +51,9 @@ def test_a_step_without_numbers_is_named_with_its_reason():
 
 def test_another_level_of_the_bridge_speaks_only_where_it_is_beyond_chance():
     same = replace(BRIDGE, level=0.975)
-    assert " At 97.5% score better beyond chance: plus filter; worse beyond chance: plus tail. From" in why(
-        BRIDGE, [same]
+    assert (
+        " At 97.5%, by the FZ0 score, better beyond chance: plus filter; worse beyond chance: plus tail. From"
+        in why(BRIDGE, [same])
     )
     unclear = replace(same, steps=STEPS[:2])
     assert why(BRIDGE, [unclear]) == why(BRIDGE)
@@ -69,7 +69,7 @@ def test_what_needs_a_person():
         "1,200; 3 data remarks to read; 17 desk-days with an exception (any level or P&L kind) since 2025-01-02 to "
         "explain; the 99% count is rejected on 6 of 12 desks (A, B (VaR too high), C, D, E and 1 more), where chance "
         "alone gives at most 0.6; without any challenger: New desk; judged on less than was asked for: New desk (131 "
-        "of 250 days). The opinion is a person's to give; none is given here."
+        "of 250 days). The opinion is a person's to give."
     )
 
 
@@ -78,5 +78,5 @@ def test_what_needs_a_person_where_nothing_is_open():
     assert needs_person(facts) == (
         "None of 1 desk x day x model forecast fell back on a stated substitute; 1 data remark to read; no desk-days "
         "with an exception (any level or P&L kind) since 2025-01-02 to explain; the 99% count is rejected on none of 2 "
-        "desks, where chance alone gives at most 0.1. The opinion is a person's to give; none is given here."
+        "desks, where chance alone gives at most 0.1. The opinion is a person's to give."
     )

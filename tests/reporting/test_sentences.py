@@ -3,10 +3,12 @@ from dataclasses import replace
 
 import pytest
 
+from backtest.judging import phrases
 from backtest.reporting.book import Book, Span
 from backtest.reporting.drawn import scope_of
 from backtest.reporting.facts import (
     Count,
+    Hardly,
     Often,
     Power,
     Rejection,
@@ -22,9 +24,9 @@ from backtest.reporting.sentences import (
     by_how_much,
     how_often,
     six_sentences,
-    unseen,
     when_they_fell,
 )
+from backtest.reporting.unseen import UNSEEN, hardly, unseen
 from tests.reference.invented_record import FIRM, SUBJECT, invented_record
 
 SPAN = Span(0, "2025-01-02", "2025-12-31", 250)
@@ -173,6 +175,16 @@ def test_when(case):
     assert when_they_fell(facts) == text
 
 
+def test_a_joint_test_that_speaks_of_the_rate_is_said_together_with_the_count():
+    rate = Rejection("dynamic-quantile", 0.975, "hypothetical", 0.01, "evidence that VaR is too low")
+    clustered = replace(rate, phrase="evidence that exceptions are too clustered")
+    said = when_they_fell(replace(REJECTED, more=(rate, clustered)))
+    assert said.endswith(
+        "Evidence that exceptions are too clustered (Dynamic quantile: 97.5% hypothetical p = 0.010). Together with "
+        "the count: evidence that VaR is too low (Dynamic quantile: 97.5% hypothetical p = 0.010)."
+    )
+
+
 SHORT = Sufficient("VaR", 1.55, 1.03, 3.08, 2.1e6, 250, "")
 HOW_MUCH = {
     "short": (
@@ -191,13 +203,13 @@ HOW_MUCH = {
         Size(
             SCOPE,
             replace(SHORT, estimate=0.8, low=0.6, high=0.95),
-            Sufficient("ES", 1.1, 0.7, 1.6, None, 249, "interval by bootstrap over days"),
+            Sufficient("ES", 1.1, 0.7, 1.6, None, 249, "interval assumes independent days; coverage 94 to 98%"),
             (Rejection("acerbi-szekely-2", 0.975, "actual", 0.012, "evidence that VaR or ES is too low"),),
         ),
         "The 97.5% VaR of HS-250 (hypothetical P&L, 250 days) would have sufficed at 0.80 times its size (0.60 to "
         "0.95), on average EUR 1.68 m instead of EUR 2.10 m, EUR 420 k less. The 97.5% ES (249 days) would have had to "
         "be 1.10 times as large (0.70 to 1.60). The VaR interval is 95%, if days were independent. The ES interval is "
-        "a 95% bootstrap over days and too short with few losses beyond the VaR. Evidence that VaR or ES is too low "
+        "95% (assumes independent days; coverage 94 to 98%). Evidence that VaR or ES is too low "
         "(Acerbi and Szekely, statistic 2: 97.5% actual p = 0.012).",
     ),
     "not tested": (
@@ -224,6 +236,33 @@ def test_what_the_review_could_not_see():
     assert unseen(None, True) == (
         "The power of the count was not computed. The ten-day stressed ES used for capital was not tested."
     )
+
+
+def test_tests_that_could_hardly_have_seen_it_are_counted_and_named_with_their_power():
+    two = Hardly(SUBJECT, 4, (("christoffersen-independence", 0.035, 0.08), ("binomial", 0.27, 0.27)))
+    assert unseen(None, True, two) == (
+        "The power of the count was not computed. 4 results without evidence on HS-250, of tests that could hardly "
+        "have seen it (power below 80 in 100): Christoffersen, independence (4 to 8 in 100); Exact binomial (27 in "
+        "100). The ten-day stressed ES used for capital was not tested."
+    )
+    many = replace(two, tests=tuple((f"test-{i}", 0.1, 0.2) for i in range(5)))
+    assert "test-2 (10 to 20 in 100); and 2 more tests." in unseen(None, True, many)
+
+
+def test_only_results_of_the_main_span_that_could_hardly_see_count():
+    record = invented_record()
+    table = record.results.copy()
+    one = (table["test"] == "binomial") & (table["desk"] == FIRM) & (table["model"] == SUBJECT)
+    table.loc[one, ["phrase", "decision", "p_value", "could_see"]] = [UNSEEN, "not rejected", 0.3, 0.4]
+    other_desk = (table["test"] == "binomial") & (table["desk"] == "NA")
+    table.loc[other_desk, ["phrase", "decision", "p_value", "could_see"]] = [UNSEEN, "not rejected", 0.3, 0.1]
+    book = Book(replace(record, results=table))
+    assert hardly(book, scope_of(book)) == Hardly(SUBJECT, 4, (("binomial", 0.4, 0.4),))
+    assert hardly(Book(record), scope_of(Book(record))) is None
+
+
+def test_the_phrase_of_little_power_is_the_one_judging_writes():
+    assert UNSEEN == phrases.UNSEEN
 
 
 def test_without_a_firm_the_page_says_which_desk_it_speaks_of_and_why():

@@ -1,0 +1,186 @@
+"""From forecasts to a record: everything judged, by terms fixed before, and the manifest of the run."""
+
+import datetime as dt
+from collections.abc import Mapping, Sequence
+from dataclasses import asdict, dataclass
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from backtest.explaining.steps import DeskSteps, Method
+from backtest.forecasting.engine import joined
+from backtest.forecasting.histories import learnt_from
+from backtest.forecasting.models import Model
+from backtest.judging.battery import Battery, judge_table
+from backtest.judging.bridge import bridge_table
+from backtest.judging.criteria import Criteria, criteria_table
+from backtest.judging.exceptions import exceptions_table
+from backtest.judging.four_cells import four_cells
+from backtest.judging.power import upper_power
+from backtest.judging.scoreboard import scoreboard
+from backtest.judging.sufficiency import multiple_results
+from backtest.recording.manifest import make_manifest
+from backtest.recording.terms import changed_terms, hashed_terms
+from backtest.records import (
+    DATE_DTYPE,
+    FORECAST_COLUMNS,
+    PNL_KINDS,
+    REMARK_COLUMNS,
+    REPORTED_STATUS,
+    Inputs,
+    Record,
+    Result,
+    first_known,
+    latest_known,
+    results_table,
+)
+from backtest.study_form import Criteria as HouseDefaults
+from backtest.study_form import Study
+from backtest.verbs import Progress
+
+
+@dataclass(frozen=True)
+class Resolved:
+    """Everything a study names, resolved before any data are read."""
+
+    models: tuple[Model, ...]
+    methods: tuple[Method, ...]
+    battery: Battery
+    previous: Mapping[str, Any] | None
+
+
+def reported_rows(inputs: Inputs) -> pd.DataFrame:
+    """Return the institution's forecasts in the form of our own."""
+    rows = inputs.reported.rename(columns={"pit": "pit_hypothetical"})
+    rows = rows.assign(horizon=1, status=REPORTED_STATUS, origin=np.datetime64("NaT", "us"))
+    for column in FORECAST_COLUMNS:
+        if column not in rows:
+            rows[column] = np.nan
+    return rows[list(FORECAST_COLUMNS)].astype({"origin": DATE_DTYPE})
+
+
+def judged(
+    study: Study,
+    inputs: Inputs,
+    resolved: Resolved,
+    forecasts: pd.DataFrame,
+    fits: pd.DataFrame,
+    bridge: Sequence[DeskSteps],
+    started: dt.datetime,
+    report: Progress,
+) -> Record:
+    """Return the record of a run: its forecasts judged by terms that are fixed, and hashed, before judging."""
+    terms = _terms(study, inputs, resolved)
+    report("judging", 0, 1)
+    pnl, rows = latest_known(inputs.pnl, inputs.as_of), joined([reported_rows(inputs), forecasts], FORECAST_COLUMNS)
+    results = _results(study, inputs, resolved, pnl, rows)
+    everything = joined([rows, *(b.extra for b in bridge)], FORECAST_COLUMNS)
+    manifest = _manifest(study, inputs, resolved, everything[everything["horizon"] == 1], started, terms)
+    levels, subject = study.forecast.levels, study.review.subject
+    window, significance = study.forecast.window, study.judge.significance
+    return Record(
+        manifest=manifest,
+        pnl=_kept_pnl(inputs),
+        forecasts=everything,
+        fits=fits,
+        results=results_table(results),
+        criteria=criteria_table(results, _criteria(study), subject=subject, place=_main_place(study)),
+        exceptions=exceptions_table(pnl, rows, subject, as_of=inputs.as_of),
+        bridge=bridge_table(pnl, {b.desk: b.steps for b in bridge}, levels=levels, as_of=inputs.as_of),
+        four_cells=four_cells(pnl, rows, levels=levels, window=window, significance=significance, as_of=inputs.as_of),
+        scoreboard=scoreboard(pnl, rows, calendar=inputs.calendar, as_of=inputs.as_of),
+        paths=pd.DataFrame(columns=["desk", "model", "figure", "series", "x", "y", "low", "high"]),
+        remarks=pd.DataFrame([[getattr(r, c) for c in REMARK_COLUMNS] for r in inputs.remarks], columns=REMARK_COLUMNS),
+    )
+
+
+def _results(study: Study, inputs: Inputs, resolved: Resolved, pnl: pd.DataFrame, rows: pd.DataFrame) -> list[Result]:
+    review, judge = study.review, study.judge
+    options: dict[str, Any] = {
+        "spans": review.days, "seed": study.seed, "calendar": inputs.calendar, "as_of": inputs.as_of,
+    }  # fmt: skip
+    results = judge_table(
+        pnl, rows, tests=resolved.battery, significance=judge.significance, simulations=judge.simulations,
+        lagged_hits=judge.lagged_hits, subject=review.subject, firm=review.firm, rules=review.rules,
+        first_known=first_known(inputs.pnl, inputs.as_of), **options,
+    )  # fmt: skip
+    return results + multiple_results(pnl, rows, **options)
+
+
+def _criteria(study: Study) -> Criteria:
+    return Criteria(**(study.review.criteria or HouseDefaults()).model_dump())
+
+
+def _main_place(study: Study) -> int:
+    """Return the place of the span the criteria are about: the shortest number of days asked for, else the first."""
+    days = [d for d in study.review.days if isinstance(d, int)]
+    return study.review.days.index(min(days)) if days else 0
+
+
+def _terms(study: Study, inputs: Inputs, resolved: Resolved) -> dict[str, object]:
+    """Return the terms of this review with their hash, and how they differ from those of the previous one."""
+    review, judge = study.review, study.judge
+    values = {
+        "subject": review.subject, "days": review.days, "rules": review.rules, "as_of": str(inputs.as_of),
+        "tests": resolved.battery.keys, "significance": judge.significance, "simulations": judge.simulations,
+        "lagged_hits": judge.lagged_hits, "criteria": asdict(_criteria(study)),
+    }  # fmt: skip
+    kept = hashed_terms(values)
+    if resolved.previous is not None:
+        before: Any = resolved.previous.get("terms", {})
+        kept["previous_run"] = resolved.previous.get("run")
+        kept["changed"] = changed_terms(values, before.get("values", {}))
+    return kept
+
+
+def _kept_pnl(inputs: Inputs) -> pd.DataFrame:
+    """Return the P&L as known at the cut-off, with the first-known values beside it where they differ."""
+    pnl, first = latest_known(inputs.pnl, inputs.as_of), first_known(inputs.pnl, inputs.as_of)
+    both = pnl.merge(first, on=["date", "desk"], how="left", suffixes=("", "_first"))
+    for kind in PNL_KINDS:
+        if kind in pnl:
+            pnl[f"first_known_{kind}"] = both[f"{kind}_first"].where(both["known_on"] != both["known_on_first"])
+    return pnl
+
+
+def _manifest(
+    study: Study, inputs: Inputs, resolved: Resolved, forecasts: pd.DataFrame, started: dt.datetime,
+    terms: dict[str, object],
+) -> dict[str, object]:  # fmt: skip
+    settings = study.model_dump(mode="json", by_alias=True, exclude_none=True)
+    level, days = 0.99, min((d for d in study.review.days if isinstance(d, int)), default=250)
+    pnl = latest_known(inputs.pnl, inputs.as_of)
+    desks = {
+        str(desk): {
+            "first": f"{rows['date'].min():%Y-%m-%d}",
+            "last": f"{rows['date'].max():%Y-%m-%d}",
+            "days": len(rows),
+            **learnt_from(study.forecast.learn_from, inputs.vectors, str(desk)),
+        }
+        for desk, rows in pnl.groupby("desk")
+    }
+    models = [
+        {
+            "name": m.name,
+            "filter": m.filter.label,
+            "tail": m.tail.kind,
+            "window": m.window,
+            "line": m.line,
+            "source": m.source,
+        }
+        for m in resolved.models
+    ]
+    power = {
+        "level": level, "days": days, "nominal_rate": round(1 - level, 12), "true_rate": round(2 * (1 - level), 12),
+        "power": upper_power(days, level),
+    }  # fmt: skip
+    criteria = asdict(_criteria(study)) | {"house_defaults": study.review.criteria is None}
+    return make_manifest(
+        study=settings, sources=inputs.sources, seeds={"study": study.seed}, forecasts=forecasts, started=started,
+        finished=dt.datetime.now(dt.UTC),
+        extra={
+            "as_of": str(inputs.as_of), "models": models, "desks": desks, "power": power, "terms": terms,
+            "criteria": criteria,
+        },
+    )  # fmt: skip
