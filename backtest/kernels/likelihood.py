@@ -12,7 +12,7 @@ import numpy as np
 from backtest.kernels import passes
 from backtest.kernels.compiled import in_place
 from backtest.kernels.laws import set_constants
-from backtest.kernels.parameters import BETA, COUNT, ETA, LAMBDA
+from backtest.kernels.parameters import BETA, COUNT, ETA, LAMBDA, MEAN_SQUARE, UNCONDITIONAL
 from backtest.kernels.start import first_curvature, first_variance
 from backtest.kernels.terms import AFTER, DD, LAW, THETA, VALUE
 
@@ -22,9 +22,10 @@ def begin(p: np.ndarray, lane: int, start: int, fixed: float, moments: np.ndarra
     """Set one lane's first day: h, its derivatives, and the constants of the law; ``moments`` (lanes, 6 or more)."""
     p[VALUE, lane] = 0.0
     p[AFTER, lane] = first_variance(p, lane, start, fixed, moments)
-    for i in range(BETA + 1):
-        for j in range(i, BETA + 1):
-            p[DD + i * COUNT + j, lane] = first_curvature(i, j, p, lane, start, moments)
+    if start in (MEAN_SQUARE, UNCONDITIONAL):  # else it stays zero
+        for i in range(BETA + 1):
+            for j in range(i, BETA + 1):
+                p[DD + i * COUNT + j, lane] = first_curvature(i, j, p, lane, start, moments)
     if tails is not None:
         set_constants(p, LAW, lane, p[THETA + ETA, lane], p[THETA + LAMBDA, lane], skew)
 
