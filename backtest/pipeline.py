@@ -7,7 +7,6 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-import joblib
 import pandas as pd
 
 from backtest.errors import StudyError
@@ -38,10 +37,10 @@ from backtest.reporting.html import summary_html
 from backtest.reporting.lines import input_lines
 from backtest.reporting.sentences import six_sentences
 from backtest.reporting.show import day_view
-from backtest.review import Resolved, judged, reported_rows
+from backtest.review import Resolved, judged, refitted, reported_rows
 from backtest.study_form import Study
 from backtest.values import whole
-from backtest.verbs import Progress, each, forecast_desks, refuse_reserved, silent
+from backtest.verbs import Progress, cores, each, forecast_desks, refuse_reserved, silent
 
 SUMMARY = "summary.html"
 
@@ -132,11 +131,12 @@ def run(
     wanted = check_place(study.folder / f"{study.path.stem}-run" if out is None else out)
     report("reading", 0, 1)
     inputs, histories = _inputs(study, resolved)
-    cores = joblib.cpu_count() if workers is None else whole(workers, "workers", least=1)
+    threads = cores() if workers is None else whole(workers, "workers", least=1)
     asked = ask(study.forecast.bands, study.forecast.horizons, seed=study.seed)
-    forecasts, fits = forecast_desks(histories, resolved.models, study.forecast.levels, cores, report, asked)
-    bridge = _bridge_steps(study, inputs, histories, forecasts, resolved, cores, report)
-    record = judged(study, inputs, resolved, forecasts, fits, bridge, started, report)
+    forecasts, fits = forecast_desks(histories, resolved.models, study.forecast.levels, threads, report, asked)
+    bridge = _bridge_steps(study, inputs, histories, forecasts, resolved, threads, report)
+    risk = refitted(study, inputs, resolved, histories, forecasts, threads, report)
+    record = judged(study, inputs, resolved, forecasts, fits, bridge, risk, started, report)
     folder = replace_folder(record, wanted) if replace else write_record(record, wanted)
     report("writing the summary", 0, 1)
     write_document(folder, SUMMARY, summary_html(record))

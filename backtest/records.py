@@ -42,6 +42,10 @@ SCOREBOARD_COLUMNS = (
     "desk", "model", "level", "pnl_kind", "from", "to", "days", "exceptions", "average_var", "average_change",
     "peak_to_trough", "longest_run", "tick", "fz0", "half_homogeneous", "note",
 )  # fmt: skip
+ESTIMATION_RISK_COLUMNS = (
+    "desk", "model", "level", "pnl_kind", "from", "to", "days", "test", "statistic", "p_value", "usual_law",
+    "p_refitted", "law", "replications", "count_mean", "count_sd", "binomial_mean", "binomial_sd", "seconds", "note",
+)  # fmt: skip
 REMARK_COLUMNS = ("rule", "source", "desk", "first", "last", "count", "text")
 
 REPORTED_STATUS = "as reported"
@@ -192,6 +196,7 @@ class Record:
     bridge: pd.DataFrame
     four_cells: pd.DataFrame
     scoreboard: pd.DataFrame
+    estimation_risk: pd.DataFrame
     paths: pd.DataFrame
     remarks: pd.DataFrame
 

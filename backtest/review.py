@@ -8,22 +8,26 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
+from backtest.explaining.estimation_risk import estimation_risk
 from backtest.explaining.steps import DeskSteps, Method
-from backtest.forecasting.engine import joined
+from backtest.forecasting.engine import DeskHistory, joined
 from backtest.forecasting.histories import learnt_from
 from backtest.forecasting.models import Model
+from backtest.judging.answers import Settings
 from backtest.judging.battery import Battery, judge_table
 from backtest.judging.bridge import bridge_table
 from backtest.judging.criteria import Criteria, criteria_table
 from backtest.judging.exceptions import exceptions_table
 from backtest.judging.four_cells import four_cells
 from backtest.judging.power import upper_power
+from backtest.judging.samples import Desk, read_book
 from backtest.judging.scoreboard import scoreboard
 from backtest.judging.sufficiency import multiple_results
 from backtest.recording.manifest import make_manifest
 from backtest.recording.terms import changed_terms, hashed_terms
 from backtest.records import (
     DATE_DTYPE,
+    ESTIMATION_RISK_COLUMNS,
     FORECAST_COLUMNS,
     PNL_KINDS,
     REMARK_COLUMNS,
@@ -37,7 +41,7 @@ from backtest.records import (
 )
 from backtest.study_form import Criteria as HouseDefaults
 from backtest.study_form import Study
-from backtest.verbs import Progress
+from backtest.verbs import Progress, each
 
 
 @dataclass(frozen=True)
@@ -67,6 +71,7 @@ def judged(
     forecasts: pd.DataFrame,
     fits: pd.DataFrame,
     bridge: Sequence[DeskSteps],
+    risk: pd.DataFrame,
     started: dt.datetime,
     report: Progress,
 ) -> Record:
@@ -90,9 +95,40 @@ def judged(
         bridge=bridge_table(pnl, {b.desk: b.steps for b in bridge}, levels=levels, as_of=inputs.as_of),
         four_cells=four_cells(pnl, rows, levels=levels, window=window, significance=significance, as_of=inputs.as_of),
         scoreboard=scoreboard(pnl, rows, calendar=inputs.calendar, as_of=inputs.as_of),
+        estimation_risk=risk,
         paths=pd.DataFrame(columns=["desk", "model", "figure", "series", "x", "y", "low", "high"]),
         remarks=pd.DataFrame([[getattr(r, c) for c in REMARK_COLUMNS] for r in inputs.remarks], columns=REMARK_COLUMNS),
     )
+
+
+def refitted(
+    study: Study,
+    inputs: Inputs,
+    resolved: Resolved,
+    histories: Sequence[DeskHistory],
+    forecasts: pd.DataFrame,
+    workers: int,
+    report: Progress,
+) -> pd.DataFrame:
+    """Return the laws of tests under re-estimation, where the study asks for them; replicates are kept beside it."""
+    if not study.judge.estimation_risk:
+        return pd.DataFrame(columns=list(ESTIMATION_RISK_COLUMNS))
+    judge, pnl = study.judge, latest_known(inputs.pnl, inputs.as_of)
+    rows = joined([reported_rows(inputs), forecasts], FORECAST_COLUMNS)
+    settings = Settings(judge.significance, judge.simulations, study.seed, judge.lagged_hits)
+    known = {history.desk: history for history in histories}
+    book = read_book(pnl, rows, calendar=inputs.calendar, as_of=inputs.as_of)
+    folder = study.folder / f"{study.path.stem}-replicates"
+
+    def say(text: str) -> None:
+        report(text, 0, 1)
+
+    def of_desk(desk: Desk) -> pd.DataFrame:
+        samples = list(desk.samples(study.review.days))
+        return estimation_risk(known[desk.name], samples, resolved.models, settings, folder=folder, say=say)
+
+    desks = [desk for desk in book.desks if desk.name in known]
+    return joined(each(of_desk, desks, workers, report, "estimation risk by desk"), ESTIMATION_RISK_COLUMNS)
 
 
 def _results(study: Study, inputs: Inputs, resolved: Resolved, pnl: pd.DataFrame, rows: pd.DataFrame) -> list[Result]:

@@ -65,8 +65,8 @@ class Criteria(Form):
 
     ``..._multiple_at_most``: the multiple of the reported VaR or ES that would have sufficed, by the lower end of its
     interval. ``exceptions_zone``: the worst zone of the dated rule that is accepted. ``clustering``: "no evidence"
-    asks that no test of when exceptions fall finds them clustered, "any" asks nothing. ``minimum_days``: below it
-    nothing is judged.
+    asks that no test of when exceptions fall finds them clustered or dependent on the size of VaR, "any" asks nothing.
+    ``minimum_days``: below it nothing is judged.
     """
 
     var_multiple_at_most: float = Field(default=1.2, gt=0)
@@ -198,13 +198,15 @@ class Forecast(Form):
 class Judge(Form):
     """Which tests are asked, and how finely their laws are simulated.
 
-    ``lagged_hits``: of the dynamic quantile test.
+    ``lagged_hits``: of the dynamic quantile test. ``estimation_risk``: judge also whole histories simulated from each
+    model that is a law, forecast anew day by day: minutes a desk; replicates are kept beside the study.
     """
 
     tests: Literal["default"] | tuple[str, ...] = "default"
     significance: float = Field(default=0.05, gt=0, lt=0.5)
     simulations: int = Field(default=9999, ge=99)
     lagged_hits: Literal[1, 4] = 1
+    estimation_risk: bool = False
 
 
 class Study(Form):

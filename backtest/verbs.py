@@ -1,9 +1,10 @@
 """The verbs on tables, pandas in and out: forecast and judge; and the loop over desks that a run shares with them."""
 
-from collections.abc import Callable, Mapping, Sequence
+import os
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from concurrent.futures import ThreadPoolExecutor
 from typing import Any
 
-import joblib
 import numpy as np
 import pandas as pd
 
@@ -155,11 +156,26 @@ def forecast_desks(
 
 def each(call: Callable[[Any], Any], tasks: Sequence[Any], workers: int, report: Progress, what: str) -> list[Any]:
     """Return ``call`` of every task, in order, by ``workers`` threads, reporting each as it is done."""
+    threads = min(workers, len(tasks))
+    if threads <= 1:
+        return _collected(map(call, tasks), len(tasks), report, what)
+    pool = ThreadPoolExecutor(threads)
+    try:
+        return _collected(pool.map(call, tasks), len(tasks), report, what)
+    finally:  # an error or an interrupt does not wait for what has not begun
+        pool.shutdown(cancel_futures=True)
+
+
+def cores() -> int:
+    """Return how many processors this process may use."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+
+
+def _collected(parts: Iterable[Any], total: int, report: Progress, what: str) -> list[Any]:
     found = []
-    parallel = joblib.Parallel(n_jobs=max(1, min(workers, len(tasks) or 1)), prefer="threads", return_as="generator")
-    for i, part in enumerate(parallel(joblib.delayed(call)(task) for task in tasks)):
-        report(what, i + 1, len(tasks))
+    for part in parts:
         found.append(part)
+        report(what, len(found), total)
     return found
 
 

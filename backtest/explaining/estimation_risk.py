@@ -37,13 +37,10 @@ from backtest.judging.nulls import generator, p_doubled, p_upper
 from backtest.judging.pits import read_pits
 from backtest.judging.samples import Sample
 from backtest.judging.severity import z2
+from backtest.records import ESTIMATION_RISK_COLUMNS
 
 Floats = npt.NDArray[np.float64]
 
-ESTIMATION_RISK_COLUMNS = (
-    "desk", "model", "level", "pnl_kind", "from", "to", "days", "test", "statistic", "p_value", "usual_law",
-    "p_refitted", "law", "replications", "count_mean", "count_sd", "binomial_mean", "binomial_sd", "seconds", "note",
-)  # fmt: skip
 REPLICATIONS = 199
 FEWEST_REPLICATIONS = 19
 REFITTED = "refitted"

@@ -15,6 +15,8 @@ from backtest.records import CRITERIA_COLUMNS, Result
 
 MET, NOT_MET, UNJUDGED = "met", "not met", "could not be judged"
 OUTCOME = "proposed outcome"
+_FOLLOW = (EVIDENCE["clustered"], EVIDENCE["with-var"])
+"""What fails the criterion on when exceptions fall: exceptions too even, or a wrong rate alone, do not."""
 ZONES = ("green", "amber", "red")
 """Zones of the dated rule from best to worst."""
 
@@ -115,8 +117,8 @@ def _clustering(own: Sequence[Result], criteria: Criteria) -> Iterator[Judged]:
         answer, note = _short(r, criteria)
         if not answer and r.p_value is None:
             answer, note = UNJUDGED, r.phrase
-        clustered = r.decision == "rejected" and r.phrase == EVIDENCE["clustered"]
-        yield _row(r, "clustering", criteria.clustering, answer or (NOT_MET if clustered else MET), note or r.test)
+        follows = r.decision == "rejected" and r.phrase in _FOLLOW
+        yield _row(r, "clustering", criteria.clustering, answer or (NOT_MET if follows else MET), note or r.test)
 
 
 def _zone(own: Sequence[Result], criteria: Criteria) -> Iterator[Judged]:

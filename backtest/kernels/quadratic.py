@@ -13,6 +13,7 @@ from backtest.kernels.parameters import COUNT
 
 LINES = 11
 """Constraints."""
+Row = int | np.int64
 Q, A = np.int64(0), np.int64(COUNT)
 G, SLACK, STEP = A + LINES, A + LINES + 1, A + LINES + 2
 """Rows of the sheet that pose the programme, and its answer; not plain constants, for each of which a kernel handed one
@@ -41,7 +42,7 @@ def solve(curvature: np.ndarray, gradient: np.ndarray, rows: np.ndarray, slack: 
 
 
 @inner
-def dot(w: np.ndarray, a: int, b: int, n: int) -> float:
+def dot(w: np.ndarray, a: Row, b: Row, n: Row) -> float:
     """Return the inner product of two rows; loops, since a call into BLAS costs more than the sum of a few numbers."""
     total = 0.0
     for i in range(n):
@@ -50,7 +51,7 @@ def dot(w: np.ndarray, a: int, b: int, n: int) -> float:
 
 
 @in_place
-def cholesky_solve(w: np.ndarray, n: int) -> bool:
+def cholesky_solve(w: np.ndarray, n: Row) -> bool:
     """Solve MATRIX y = RIGHT in place of RIGHT for a positive definite matrix (lower triangle); False where it is not.
 
     The matrix is overwritten.
@@ -79,7 +80,7 @@ def cholesky_solve(w: np.ndarray, n: int) -> bool:
 
 
 @inner
-def null_basis(w: np.ndarray, n: int) -> int:
+def null_basis(w: np.ndarray, n: int) -> Row:
     """Fill the directions that keep the active constraints unchanged, by elimination; return how many there are."""
     m = np.int64(0)
     for line in range(LINES):
@@ -109,7 +110,7 @@ def null_basis(w: np.ndarray, n: int) -> int:
 
 
 @inner
-def unit_directions(w: np.ndarray, n: int, m: int) -> int:
+def unit_directions(w: np.ndarray, n: int, m: Row) -> Row:
     """Fill a direction for each parameter that is not the pivot of one of ``m`` eliminated rows."""
     free = 0
     for j in range(n):
@@ -127,7 +128,7 @@ def unit_directions(w: np.ndarray, n: int, m: int) -> int:
 
 
 @inner
-def reduced_step(w: np.ndarray, n: int, free: int) -> bool:
+def reduced_step(w: np.ndarray, n: int, free: Row) -> bool:
     """Fill the move that the reduced problem asks for; tell whether curvature had to be added to make it well posed."""
     most = 0.0
     for a in range(free):

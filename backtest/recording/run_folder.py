@@ -32,6 +32,7 @@ TABLES = {
     "bridge": "bridge.csv",
     "four_cells": "four_cells.csv",
     "scoreboard": "scoreboard.csv",
+    "estimation_risk": "estimation_risk.csv",
     "paths": "paths.parquet",
     "remarks": "data_remarks.csv",
 }

@@ -16,7 +16,7 @@ NAMES = {
     "exceptions_zone": "zone of the dated rule",
     "var_multiple_at_most": "multiple of VaR that would have sufficed",
     "es_multiple_at_most": "multiple of ES that would have sufficed",
-    "clustering": "exceptions that follow exceptions",
+    "clustering": "when exceptions fall",
 }
 _HEADER = ("Criterion", "Limit", "Level", "P&L", "Days", "Found [95%]", "Answer", "Basis")
 

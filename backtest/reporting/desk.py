@@ -12,6 +12,7 @@ from backtest.reporting.facts import Scope
 from backtest.reporting.index import NOTHING
 from backtest.reporting.logs import exceptions_table, remarks_table
 from backtest.reporting.parts import parts_tables, parts_words
+from backtest.reporting.refitted import refitted_table
 from backtest.reporting.scoreboard import scoreboard_table
 from backtest.reporting.tables import (
     Fact,
@@ -46,6 +47,7 @@ class DeskView:
     scoreboard: Table | None
     parts_words: tuple[str, ...]
     parts: tuple[Table, ...]
+    refitted: Table | None
     bridges: tuple[Table, ...]
     bridge_notes: tuple[str, ...]
     exceptions: Table | None
@@ -68,6 +70,7 @@ def desk_view(book: Book, desk: str, anchor: str) -> DeskView:
         scoreboard=scoreboard_table(book, desk, kind),
         parts_words=parts_words(book, desk, kind),
         parts=parts_tables(book, desk, kind),
+        refitted=refitted_table(book, desk, kind),
         bridges=tuple(bridge_table(b) for b in found if b.steps),
         bridge_notes=tuple(bridge_words(b) for b in found if not b.steps),
         exceptions=exceptions_table(book.record.exceptions, desk, book.main_model),

@@ -22,10 +22,11 @@ def render(summary: Summary) -> str:
     return room.get_template("summary.html").render(page=summary)
 
 
+_AMOUNT = re.compile(r"\b([A-Z]{3}) (−?\d[\d.,]*)(?: (bn|m|k)\b)?")
+_POWER = re.compile(r"\d+ in 100\b")
+
+
 def unbroken(text: str) -> str:
-    """Return text whose amounts do not break between currency, figures and scale."""
-    return re.sub(
-        r"\b([A-Z]{3}) (−?\d[\d.,]*)(?: (bn|m|k)\b)?",
-        lambda m: "\N{NO-BREAK SPACE}".join(filter(None, m.groups())),
-        text,
-    )
+    """Return text whose amounts do not break between currency, figures and scale, nor powers inside."""
+    text = _AMOUNT.sub(lambda m: "\N{NO-BREAK SPACE}".join(filter(None, m.groups())), text)
+    return _POWER.sub(lambda m: m.group().replace(" ", "\N{NO-BREAK SPACE}"), text)

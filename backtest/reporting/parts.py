@@ -19,7 +19,7 @@ _VERDICTS = (
 _LABELS = {"garch": "GARCH", "gpd": "GPD"}
 _CELLS = (
     "Level", "Filter", "Tail", "Model", "Exceptions (expected)", "Average VaR", "Width of VaR interval",
-    "Width in % of VaR", "Mean score",
+    "% of VaR", "Mean score",
 )  # fmt: skip
 _EFFECTS = ("Level", "Part", "Gain in mean score [95%]", "Share of the whole gain [95%]", "t", "p", "Decision")
 

@@ -39,7 +39,10 @@ def _gain(steps: Sequence[Step]) -> str:
     found = _beyond_chance(steps)
     unclear = [name for name in known if not any(name in names for names in found.values())]
     parts = [f"{which} beyond chance: {say.listed(names)}" for which, names in found.items() if names]
-    parts += [f"cannot be told from no change: {say.listed(unclear)}"] * bool(unclear)
+    if len(unclear) == len(known) > 1:
+        parts = ["no step can be told from no change"]
+    elif unclear:
+        parts.append(f"cannot be told from no change: {say.listed(unclear)}")
     return f"Step by step, by the {_score(steps)} score, {'; '.join(parts)}." if parts else ""
 
 

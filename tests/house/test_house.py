@@ -55,9 +55,9 @@ OUTSIDE = {
     "recording": FREE | {"pyarrow"},
     "reporting": FREE | {"matplotlib", "jinja2", "markupsafe"},
     "explaining": FREE,
-    "verbs": FREE | {"joblib"},
+    "verbs": FREE,
     "review": FREE,
-    "pipeline": FREE | {"joblib"},
+    "pipeline": FREE,
     "cli": {"typer", "rich"},
     "__init__": set(),
 }

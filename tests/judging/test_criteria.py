@@ -49,8 +49,9 @@ def test_zones_are_ordered_from_green_to_red(word, limit, answer):
     assert answers(zone(word), criteria=criteria)[0]["exceptions_zone"] == answer
 
 
-def test_only_evidence_of_clustering_fails_the_clustering_criterion():
+def test_only_evidence_that_exceptions_depend_on_the_past_fails_the_clustering_criterion():
     assert answers(when("rejected", "clustered", 0.01))[0]["clustering"] == NOT_MET
+    assert answers(when("rejected", "with-var", 0.01))[0]["clustering"] == NOT_MET
     assert answers(when("rejected", "spread", 0.01))[0]["clustering"] == MET
     assert answers(when("not tested", p=None))[0]["clustering"] == UNJUDGED
     assert "clustering" not in answers(when(), criteria=Criteria(1.2, 1.2, "green", "any", 250))[0]

@@ -8,7 +8,15 @@ import pandas as pd
 import pytest
 
 from backtest.errors import RecordError
-from backtest.recording.manifest import FORMAT, count_fallbacks, is_fallback, make_manifest, manifest_text, plain, run_id
+from backtest.recording.manifest import (
+    FORMAT,
+    count_fallbacks,
+    is_fallback,
+    make_manifest,
+    manifest_text,
+    plain,
+    run_id,
+)
 from backtest.records import REPORTED_STATUS, Source
 
 NINE = dt.datetime(2026, 1, 5, 9, 0, tzinfo=dt.timezone(dt.timedelta(hours=1)))

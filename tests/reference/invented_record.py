@@ -16,6 +16,7 @@ from backtest.judging.four_cells import four_cells
 from backtest.judging.scoreboard import scoreboard
 from backtest.records import (
     BRIDGE_COLUMNS,
+    ESTIMATION_RISK_COLUMNS,
     FIT_COLUMNS,
     FORECAST_COLUMNS,
     REMARK_COLUMNS,
@@ -61,6 +62,7 @@ def invented_record(*, subject: bool = True, firm: bool = True, exceptions: bool
         bridge=_bridge(losses, steps) if bridge else pd.DataFrame(columns=list(BRIDGE_COLUMNS)),
         four_cells=four_cells(pnl, forecasts, levels=LEVELS),
         scoreboard=scoreboard(pnl, forecasts),
+        estimation_risk=pd.DataFrame(columns=list(ESTIMATION_RISK_COLUMNS)),
         paths=pd.DataFrame(columns=["desk", "model", "figure", "series", "x", "y", "low", "high"]),
         remarks=_remarks(),
     )

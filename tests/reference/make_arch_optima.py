@@ -10,6 +10,7 @@ feasible, and may be too good), next-day sigma and arch's own flag (0 is success
 
 import os
 import sys
+from concurrent.futures import ProcessPoolExecutor
 from pathlib import Path
 
 os.environ |= {"OMP_NUM_THREADS": "1", "OPENBLAS_NUM_THREADS": "1"}
@@ -19,7 +20,6 @@ import arch
 import numpy as np
 import pandas as pd
 from arch import arch_model
-from joblib import Parallel, delayed
 
 from tests.reference.datasets import DATA, bmw, dem2gbp, sp500
 
@@ -60,7 +60,8 @@ def optima(series: str, model: str) -> pd.DataFrame:
 
 def main() -> None:
     work = [(series, model) for model in reversed(MODELS) for series in SERIES]
-    tables = Parallel(n_jobs=-1, verbose=10)(delayed(optima)(*each) for each in work)
+    with ProcessPoolExecutor() as pool:
+        tables = list(pool.map(optima, *zip(*work, strict=True)))
     table = pd.concat(tables, ignore_index=True).sort_values(["series", "model", "window"], ignore_index=True)
     table.attrs = {"arch": arch.__version__, "numpy": np.__version__, "window": WINDOW}
     table.astype({"series": "category", "model": "category"}).to_parquet(DATA / "arch_optima.parquet")

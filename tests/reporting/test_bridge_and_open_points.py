@@ -49,6 +49,11 @@ def test_a_step_without_numbers_is_named_with_its_reason():
     assert text.endswith("at an average VaR of EUR 3.21 m. Not in it: longer window not tested: history.")
 
 
+def test_where_no_step_can_be_told_from_no_change_this_is_said_once():
+    steps = (STEPS[0], STEPS[1], replace(STEPS[1], name="plus filter"))
+    assert "Step by step, by the FZ0 score, no step can be told from no change." in why(replace(BRIDGE, steps=steps))
+
+
 def test_another_level_of_the_bridge_speaks_only_where_it_is_beyond_chance():
     same = replace(BRIDGE, level=0.975)
     assert (

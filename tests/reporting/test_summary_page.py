@@ -244,6 +244,7 @@ def test_the_page_stays_small(html):
 
 def test_amounts_do_not_break_over_lines():
     assert unbroken("at EUR −3.21 m; EUR 450 k. m") == "at EUR\xa0−3.21\xa0m; EUR\xa0450\xa0k. m"
+    assert unbroken("(power 49 in 100)") == "(power 49\xa0in\xa0100)"
 
 
 def test_notes_are_said_once_and_name_the_levels_they_belong_to(view):
