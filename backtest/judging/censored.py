@@ -109,7 +109,7 @@ def implied_tail(sums: Sums, level: float) -> Tail:
 
     Of N(m, s) the ES at the level is m + s k, of N(0, 1) it is k = phi(c)/(1 - level): the multiple is (m + s k)/k, on
     the scale of normal scores. Its interval holds every multiple whose best likelihood is within 3.84/2 of the
-    maximum; for right forecasts it holds 1 in 92 to 95 of 100 samples of 250 or 1000 days (measured).
+    maximum; for right forecasts it covers 1 in 92 to 95 of 100 samples of 250 or 1000 days (measured).
     """
     c = float(ndtri(level))
     k = float(np.exp(-0.5 * c * c) / np.sqrt(2.0 * np.pi) / (1.0 - level))

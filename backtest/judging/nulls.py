@@ -110,19 +110,6 @@ def excess_blocks(
             yield part, excess_of_mean_one(_exponential_block(*where, block)[:size], shapes[part, None])
 
 
-@lru_cache(maxsize=16)
-def resampled_tops(seed: int, level: float, length: int, top: int, resamples: int) -> Positions:
-    """Draw the ``top`` largest positions of sorted resamples of ``length`` days, largest first: int[resamples, top].
-
-    Positions 0..length-1 are drawn with replacement; only the largest of each resample are generated, by the
-    descending recursion of uniform order statistics U_(n-1) = U_(n) V^(1/(n-1)).
-    """
-    rng = generator(seed, "bootstrap over days", level, length)
-    steps = rng.standard_exponential((resamples, top)) / np.arange(length, length - top, -1)
-    uniforms = np.exp(-np.cumsum(steps, axis=1))
-    return np.minimum((uniforms * length).astype(np.intp), length - 1)
-
-
 def p_lower(null: Floats, observed: float) -> float:
     """Return (1 + #{null <= observed})/(N + 1); ties within a relative 1e-9 count as extreme."""
     return (1 + int(np.count_nonzero(null <= observed + _TIES * abs(observed)))) / (len(null) + 1)

@@ -11,7 +11,6 @@ from backtest.judging.nulls import (
     p_doubled,
     p_lower,
     p_upper,
-    resampled_tops,
 )
 
 
@@ -49,16 +48,6 @@ def test_sums_run_over_each_path():
 def test_excesses_are_gpd_with_mean_one(shape):
     draws = excess_of_mean_one(np.random.default_rng(3).standard_exponential(20_000), np.float64(shape))
     assert stats.kstest(draws, stats.genpareto(shape, scale=1 - shape).cdf).pvalue > 0.001
-
-
-def test_resampled_tops_are_the_largest_of_a_resample():
-    tops = resampled_tops(1, 0.9, 30, 3, 40_000)
-    full = np.sort(np.random.default_rng(8).integers(0, 30, (40_000, 30)), axis=1)[:, ::-1][:, :3]
-    for place in range(3):
-        ours, theirs = (np.bincount(x[:, place], minlength=30)[20:] for x in (tops, full))
-        error = 5 * np.sqrt(np.maximum(ours + theirs, 1))
-        assert np.all(np.abs(ours - theirs) <= error)
-    assert np.all(np.diff(tops, axis=1) <= 0)
 
 
 def test_p_counts_ties_as_extreme_and_is_never_zero():
