@@ -60,8 +60,7 @@ def _head(length: int, level: float, days: int, seen: Sequence[Seen]) -> list[st
     return [
         f"Simulated power at {_percent(level)}, {length} days{used}.",
         f"Of 100 such reviews, those in which the test rejects at {SIGNIFICANCE:.0%} for the p it shows;",
-        f"{reviews} reviews simulated on a GARCH(1,1)-t{FREEDOM:g} path (alpha {ALPHA:.2f}, beta {BETA:.2f}), "
-        f"{seen[0].simulations} simulations where a law is simulated;",
+        f"{reviews} reviews simulated on a GARCH(1,1)-t{FREEDOM:g} path (alpha {ALPHA:.2f}, beta {BETA:.2f});",
         f"error (one standard deviation) up to {50.0 / min(s.reviews for s in seen) ** 0.5:.1f} of 100.",
     ]
 

@@ -2,6 +2,7 @@
 
 import pickle
 from dataclasses import replace
+from functools import cache
 
 import numpy as np
 import pandas as pd
@@ -41,9 +42,15 @@ def of(results, key):
 EVERY = pytest.mark.parametrize("key", tuple(TESTS))
 
 
+@cache
+def everything():
+    """Every test asked at once of the invented desks."""
+    return judged()
+
+
 @EVERY
 def test_every_desk_model_kind_level_and_span_has_its_row(key):
-    rows = of(judged(), key)
+    rows = of(everything(), key)
     per_model = 2 * 2 * 2 * 2  # desks, kinds, levels, spans
     between = dict.fromkeys(("diebold-mariano", "giacomini-white", "three-zone"), per_model)
     expected = ({"basel-zone": 1} | between).get(key, 2 * per_model)
@@ -54,7 +61,7 @@ def test_every_desk_model_kind_level_and_span_has_its_row(key):
 @EVERY
 def test_p_lies_in_the_unit_interval_and_phrase_agrees_with_decision(key):
     known = {*EVIDENCE.values(), NO_EVIDENCE, SEEN, UNSEEN}
-    for row in of(judged(), key):
+    for row in of(everything(), key):
         if key == "basel-zone":
             assert row.p_value is None
             continue
@@ -71,7 +78,7 @@ def test_p_lies_in_the_unit_interval_and_phrase_agrees_with_decision(key):
 @EVERY
 @pytest.mark.parametrize("losses", [None, {"A": np.full(300, -1.0)}, {"A": np.full(300, 9.0)}, {"A": np.zeros(1)}])
 def test_numbers_are_finite_or_absent(key, losses):
-    for row in of(judged(losses), key):
+    for row in judged(losses, tests=[key]):
         numbers = [getattr(row, name) for name in ("statistic", "p_value", "estimate", "low", "high", "could_see")]
         assert all(n is None or (isinstance(n, float) and np.isfinite(n)) for n in numbers)
 
@@ -94,7 +101,7 @@ def same(first, second, *, money=1.0, tolerance=0.0):
 @EVERY
 @pytest.mark.parametrize("scale", [8.0, 3.7])
 def test_scaling_pnl_and_forecasts_changes_nothing_but_money(key, scale):
-    for plain, scaled in zip(of(judged(), key), of(judged(scale=scale), key), strict=True):
+    for plain, scaled in zip(of(everything(), key), judged(scale=scale, tests=[key]), strict=True):
         same(plain, scaled, money=scale, tolerance=1e-9)
 
 
@@ -109,26 +116,26 @@ def test_order_of_desks_and_rows_changes_nothing(key):
 
 @EVERY
 def test_a_desk_is_judged_alike_alone_and_in_company(key):
-    both, alone = judged(), judged({"B": desks("A", "B")["B"]})
-    ours = [replace(r, decision_across_desks="") for r in of(both, key) if r.desk == "B"]
-    assert ours == of(alone, key)  # one desk has no others to be picked out of
+    alone = judged({"B": desks("A", "B")["B"]}, tests=[key])
+    ours = [replace(r, decision_across_desks="") for r in of(everything(), key) if r.desk == "B"]
+    assert ours == alone  # one desk has no others to be picked out of
 
 
 @EVERY
 def test_asked_alone_or_with_others_the_answer_is_the_same(key):
-    assert of(judged(), key) == judged(tests=[key])
+    assert of(everything(), key) == judged(tests=[key])
 
 
 @EVERY
 def test_same_seed_same_answer_and_results_pickle(key):
-    first = of(judged(), key)
-    assert pickle.loads(pickle.dumps(first)) == first == of(judged(), key)
+    first = judged(tests=[key])
+    assert pickle.loads(pickle.dumps(first)) == first == judged(tests=[key])
 
 
 @EVERY
 def test_zero_exceptions_are_never_a_pass(key):
     quiet = {"B": -np.abs(desks("B")["B"]) - 0.1}
-    for row in of(judged(quiet), key):
+    for row in judged(quiet, tests=[key]):
         assert row.exceptions == 0
         assert "pass" not in row.phrase
         if key in ("christoffersen-independence", "mcneil-frey"):
@@ -139,7 +146,7 @@ def test_zero_exceptions_are_never_a_pass(key):
 
 @EVERY
 def test_all_exceptions(key):
-    for row in of(judged({"B": 20.0 + np.abs(desks("B")["B"])}), key):
+    for row in judged({"B": 20.0 + np.abs(desks("B")["B"])}, tests=[key]):
         assert row.exceptions == row.days
         if key in ("binomial", "kupiec", "christoffersen-coverage", "acerbi-szekely-2"):
             assert row.decision == "rejected"
@@ -149,7 +156,7 @@ def test_all_exceptions(key):
 @EVERY
 @pytest.mark.parametrize("loss", [0.0, 50.0])
 def test_a_single_day(key, loss):
-    for row in of(judged({"B": np.array([loss])}), key):
+    for row in judged({"B": np.array([loss])}, tests=[key]):
         assert row.days == 1
         assert row.exceptions == (loss > 0)
         assert row.decision in ("rejected", "not rejected", "not tested")
@@ -211,9 +218,9 @@ def test_results_make_the_table_of_results_csv():
 
 
 def test_models_are_compared_with_the_subject_or_else_with_historical():
-    with_subject = of(judged(), "diebold-mariano")
+    with_subject = of(everything(), "diebold-mariano")
     assert {(r.model, r.against) for r in with_subject} == {("historical", "bank")}
-    without = of(judged(asked=ALONE), "diebold-mariano")
+    without = judged(asked=ALONE, tests=["diebold-mariano"])
     assert {(r.model, r.against) for r in without} == {("bank", "historical")}
 
 

@@ -99,7 +99,7 @@ def test_a_result_without_a_p_carries_no_power():
 
 def test_the_table_of_lines_has_every_test_and_marks_its_alternative():
     lines = power_lines(250, 0.99)
-    assert max(map(len, lines)) <= 115
+    assert max(map(len, lines)) <= 100
     for key in KEYS:
         (row,) = [line for line in lines if line[11:].split()[:1] == [key]]
         assert row.startswith(TESTS[key].question)

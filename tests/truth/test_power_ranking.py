@@ -6,11 +6,13 @@ The orderings are those of a power study made apart (size-adjusted, one-sided co
 import numpy as np
 import pytest
 
+from backtest.judging.alternatives import simulate
 from backtest.judging.answers import SampleTest, Settings
 from backtest.judging.battery import TESTS
 from backtest.judging.power_table import power_table
 from backtest.judging.simulated_power import beyond_right, rejections
 from backtest.judging.write_power import ONE_LAW
+from tests.reference.judging_tables import sample_of
 
 REVIEWS = 150
 SETTINGS = Settings(0.05, simulations=499, seed=77)
@@ -20,11 +22,27 @@ def power(key: str, alternative: str, length: int = 1000, level: float = 0.975) 
     return rejections(TESTS[key], alternative, level, length, SETTINGS, reviews=REVIEWS, days=1000).share
 
 
-# at 1,000 days and 97.5%: no reaction to volatility: the count 0.16, dynamic-quantile 0.54, duration-gmm 0.67 (their
-# figures for a 500-day historical simulation, which reacts a little)
+def sees_historical_simulation(key: str) -> float:
+    """Return the power against a VaR that is the 488th smallest of the last 500 losses, over 1,000 days."""
+    found = 0
+    for losses in simulate(REVIEWS, 1500, 78).losses:
+        past = np.lib.stride_tricks.sliding_window_view(losses[:-1], 500)
+        sample = sample_of(losses[500:], var=np.partition(past, 487, axis=1)[:, 487], level=0.975)
+        p = TESTS[key].judge(sample, SETTINGS).p_value
+        found += p is not None and p <= SETTINGS.significance
+    return found / REVIEWS
+
+
+# the count 0.16, dynamic-quantile 0.54, duration-gmm 0.67. Against one VaR for all days (no-reaction in the shipped
+# table) the count sees 0.40 and dynamic-quantile 0.49: a review lies in calm or stormy years as a whole, and a constant
+# VaR leaves dynamic-quantile its lagged exception alone
 @pytest.mark.parametrize("key", ["dynamic-quantile", "duration-gmm"])
-def test_clustering_is_seen_by_tests_of_when_better_than_by_tests_that_only_count(key):
-    assert power(key, "no-reaction") > power("binomial", "no-reaction") + 0.1
+def test_clustering_is_seen_by_tests_of_when_better_than_by_the_count(key):
+    assert sees_historical_simulation(key) > sees_historical_simulation("binomial") + 0.15
+
+
+def test_exceptions_under_one_var_for_all_days_are_seen_by_durations_better_than_by_the_count():
+    assert power("duration-gmm", "no-reaction") > power("binomial", "no-reaction") + 0.15
 
 
 # the count 0.07, berkowitz-tail 0.88
