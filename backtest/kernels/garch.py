@@ -98,7 +98,7 @@ def roll(
     uncertainty = np.zeros((n, 3))
     ahead_of = filtered[ahead[filtered, 1] > 0.0] if uncertain else filtered[:0]
     if ahead_of.size:
-        said = evidence(pasts, ahead_of, found, chosen)
+        said = evidence(pasts, ahead_of, found, chosen, expected=False)
         uncertainty[ahead_of] = next_day_spread(*said, found[ahead_of, :COUNT], chosen)
     found[unused, :COUNT] = np.nan
     parameters, loglik, second = found[:, :COUNT], found[:, LOGLIK], found[:, SECOND_SIGMA]

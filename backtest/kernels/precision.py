@@ -32,7 +32,7 @@ _MEANS = [C, PHI]
 @in_place
 def curvature_rows(
     values: np.ndarray, chosen: np.ndarray, parameters: np.ndarray, pasts: Pasts, p: np.ndarray, member: Member,
-    sums: np.ndarray, slopes: np.ndarray, ar: Any, gjr: Any, tails: Any, skew: Any,
+    sums: np.ndarray, slopes: np.ndarray, ar: Any, gjr: Any, tails: Any, skew: Any, expected: Any,
 ) -> None:  # fmt: skip
     """Evaluate the ``chosen`` rows of ``values`` (n, W) at their ``parameters``, in scaled units.
 
@@ -53,7 +53,7 @@ def curvature_rows(
                 p[THETA + i, lane] = parameters[row, i] * unit
             begin(p, lane, member.start, pasts.facts[lane, FIXED], pasts.facts, tails, skew)
         if tails is None:
-            add_scores(p, pasts.x, member.skip, member.free)
+            add_scores(p, pasts.x, member.skip, member.free, expected)
         evaluate(p, pasts.x, member.skip, ar, gjr, tails, skew)
         for lane in range(lanes):
             row = chosen[base + lane]
@@ -69,16 +69,16 @@ def curvature_rows(
 
 
 def evidence(
-    pasts: np.ndarray, rows: np.ndarray, parameters: np.ndarray, member: Member
+    pasts: np.ndarray, rows: np.ndarray, parameters: np.ndarray, member: Member, *, expected: bool = True
 ) -> tuple[dict[str, np.ndarray], np.ndarray]:
     """Return what ``rows`` of ``pasts`` (n, W) say at their ``parameters`` (n, columns from COUNT up), both contiguous.
 
-    Matrices (rows, free, free) by name: hessian (negative) and, of the normal law alone, opg and information; slopes
-    (rows, COUNT + 3), as ``curvature_rows`` fills them; all in the scaled units of each past.
+    Matrices (rows, free, free) by name: hessian (negative) and, of the normal law alone, opg and (where ``expected``)
+    information; slopes (rows, COUNT + 3), as ``curvature_rows`` fills them; all in the scaled units of each past.
     """
     n, free = len(pasts), member.free
     sums, slopes = np.zeros((n, 3 * COUNT * COUNT)), np.ones((n, COUNT + 3))
-    law = [True if f else None for f in (PHI in free, member.gjr, member.shapes > 0, member.shapes > 1)]
+    law = [True if f else None for f in (PHI in free, member.gjr, member.shapes > 0, member.shapes > 1, expected)]
     lanes = new_pasts(pasts.shape[1])
     curvature_rows(pasts, rows, parameters, lanes, new_scored_pass(), member, sums, slopes, *law)
     upper = sums[rows].reshape(len(rows), 3, COUNT, COUNT)
@@ -86,7 +86,7 @@ def evidence(
     if not member.gjr:
         full[:, 2, _MEANS, OMEGA:] = full[:, 2, OMEGA:, _MEANS] = 0.0
     matrices = full[:, :, free[:, None], free[None, :]]
-    names = ("opg", "information") if member.shapes == 0 else ()
+    names = ("opg", "information")[: 1 + expected] if member.shapes == 0 else ()
     return {"hessian": -matrices[:, 0], **{name: matrices[:, i] for i, name in enumerate(names, 1)}}, slopes[rows]
 
 
