@@ -253,9 +253,8 @@ def fit_rows(
         seek(values, pasts, p, s, c, rows, member, lane, status)
     busy = True
     while busy:
-        for lane in range(WIDTH):
-            if c.where[lane, AT] >= 0:
-                begin(p, lane, member.start, pasts.facts[lane, FIXED], pasts.facts, tails, skew)
+        for lane in range(WIDTH):  # idle ones too: going on from where they were they would fade into slow subnormals
+            begin(p, lane, member.start, pasts.facts[lane, FIXED], pasts.facts, tails, skew)
         evaluate(p, pasts.x, member.skip, ar, gjr, tails, skew)
         busy = False
         for lane in range(WIDTH):
