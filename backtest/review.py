@@ -78,15 +78,16 @@ def judged(
     """Return the record of a run: its forecasts judged by terms that are fixed, and hashed, before judging."""
     terms = _terms(study, inputs, resolved)
     report("judging", 0, 1)
-    pnl, rows = latest_known(inputs.pnl, inputs.as_of), joined([reported_rows(inputs), forecasts], FORECAST_COLUMNS)
-    results = _results(study, inputs, resolved, pnl, rows)
+    pnl, first = latest_known(inputs.pnl, inputs.as_of), first_known(inputs.pnl, inputs.as_of)
+    rows = joined([reported_rows(inputs), forecasts], FORECAST_COLUMNS)
+    results = _results(study, inputs, resolved, pnl, first, rows)
     everything = joined([rows, *(b.extra for b in bridge)], FORECAST_COLUMNS)
-    manifest = _manifest(study, inputs, resolved, everything[everything["horizon"] == 1], started, terms)
+    manifest = _manifest(study, inputs, resolved, pnl, everything[everything["horizon"] == 1], started, terms)
     levels, subject = study.forecast.levels, study.review.subject
     window, significance = study.forecast.window, study.judge.significance
     return Record(
         manifest=manifest,
-        pnl=_kept_pnl(inputs),
+        pnl=_kept_pnl(pnl, first),
         forecasts=everything,
         fits=fits,
         results=results_table(results),
@@ -131,7 +132,9 @@ def refitted(
     return joined(each(of_desk, desks, workers, report, "estimation risk by desk"), ESTIMATION_RISK_COLUMNS)
 
 
-def _results(study: Study, inputs: Inputs, resolved: Resolved, pnl: pd.DataFrame, rows: pd.DataFrame) -> list[Result]:
+def _results(
+    study: Study, inputs: Inputs, resolved: Resolved, pnl: pd.DataFrame, first: pd.DataFrame, rows: pd.DataFrame
+) -> list[Result]:
     review, judge = study.review, study.judge
     options: dict[str, Any] = {
         "spans": review.days, "seed": study.seed, "calendar": inputs.calendar, "as_of": inputs.as_of,
@@ -139,7 +142,7 @@ def _results(study: Study, inputs: Inputs, resolved: Resolved, pnl: pd.DataFrame
     results = judge_table(
         pnl, rows, tests=resolved.battery, significance=judge.significance, simulations=judge.simulations,
         lagged_hits=judge.lagged_hits, subject=review.subject, firm=review.firm, rules=review.rules,
-        first_known=first_known(inputs.pnl, inputs.as_of), **options,
+        first_known=first, **options,
     )  # fmt: skip
     return results + multiple_results(pnl, rows, **options)
 
@@ -150,8 +153,13 @@ def _criteria(study: Study) -> Criteria:
 
 def _main_place(study: Study) -> int:
     """Return the place of the span the criteria are about: the shortest number of days asked for, else the first."""
-    days = [d for d in study.review.days if isinstance(d, int)]
-    return study.review.days.index(min(days)) if days else 0
+    shortest = _shortest(study)
+    return 0 if shortest is None else study.review.days.index(shortest)
+
+
+def _shortest(study: Study) -> int | None:
+    """Return the shortest number of days asked for; None where only all days are judged."""
+    return min((d for d in study.review.days if isinstance(d, int)), default=None)
 
 
 def _terms(study: Study, inputs: Inputs, resolved: Resolved) -> dict[str, object]:
@@ -170,10 +178,9 @@ def _terms(study: Study, inputs: Inputs, resolved: Resolved) -> dict[str, object
     return kept
 
 
-def _kept_pnl(inputs: Inputs) -> pd.DataFrame:
+def _kept_pnl(pnl: pd.DataFrame, first: pd.DataFrame) -> pd.DataFrame:
     """Return the P&L as known at the cut-off, with the first-known values beside it where they differ."""
-    pnl, first = latest_known(inputs.pnl, inputs.as_of), first_known(inputs.pnl, inputs.as_of)
-    both = pnl.merge(first, on=["date", "desk"], how="left", suffixes=("", "_first"))
+    both, pnl = pnl.merge(first, on=["date", "desk"], how="left", suffixes=("", "_first")), pnl.copy()
     for kind in PNL_KINDS:
         if kind in pnl:
             pnl[f"first_known_{kind}"] = both[f"{kind}_first"].where(both["known_on"] != both["known_on_first"])
@@ -181,12 +188,11 @@ def _kept_pnl(inputs: Inputs) -> pd.DataFrame:
 
 
 def _manifest(
-    study: Study, inputs: Inputs, resolved: Resolved, forecasts: pd.DataFrame, started: dt.datetime,
-    terms: dict[str, object],
+    study: Study, inputs: Inputs, resolved: Resolved, pnl: pd.DataFrame, forecasts: pd.DataFrame,
+    started: dt.datetime, terms: dict[str, object],
 ) -> dict[str, object]:  # fmt: skip
     settings = study.model_dump(mode="json", by_alias=True, exclude_none=True)
-    level, days = 0.99, min((d for d in study.review.days if isinstance(d, int)), default=250)
-    pnl = latest_known(inputs.pnl, inputs.as_of)
+    level, days = 0.99, _shortest(study) or 250
     desks = {
         str(desk): {
             "first": f"{rows['date'].min():%Y-%m-%d}",

@@ -85,12 +85,12 @@ class Battery:
     keys: tuple[str, ...]
     standard: bool
 
-    def asks(self, key: str, sample: Sample) -> bool:
-        """Tell whether a sample is asked this test: by default es-zones needs a PIT and others stand in without."""
+    def of(self, sample: Sample, tests: Sequence[Asked]) -> list[Asked]:
+        """Return the tests a sample is asked: by default es-zones needs a PIT, and others stand in without."""
         if not self.standard:
-            return True
-        known = bool(np.any(~np.isnan(sample.pit)))
-        return key not in (_WITHOUT_PIT if known else _WITH_PIT)
+            return list(tests)
+        left_out = _WITHOUT_PIT if np.any(~np.isnan(sample.pit)) else _WITH_PIT
+        return [test for test in tests if test.key not in left_out]
 
 
 def resolve(tests: str | Sequence[str] | Battery) -> Battery:
@@ -159,8 +159,7 @@ def _judge_desk(
     # samples of one level and length share simulated laws: take them together, answer in the order they came
     together = sorted(range(len(samples)), key=lambda place: (samples[place].level, samples[place].days))
     answers = {
-        at: sets[at]
-        | _judge_sample(desk, samples[at], [t for t in tests if asked.asks(t.key, samples[at])], reference, settings)
+        at: sets[at] | _judge_sample(desk, samples[at], asked.of(samples[at], tests), reference, settings)
         for at in together
     }
     keys = [test.key for test in tests]

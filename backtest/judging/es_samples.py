@@ -17,12 +17,11 @@ from backtest.judging.nulls import (
     excesses_of_shape,
 )
 from backtest.judging.phrases import p_text
+from backtest.judging.pits import NEAREST, kept_inside
 from backtest.judging.samples import Sample
 
 Floats = npt.NDArray[np.float64]
 
-PIT_LIMIT = 1e-12
-"""PITs are kept this far from 0 and 1."""
 _UNUSABLE_SHARE = 0.05
 
 
@@ -56,9 +55,8 @@ def usable_with_pit(sample: Sample) -> tuple[Sample, str, tuple[str, ...]]:
     if not known.all():
         notes = (*notes, f"{int(np.count_nonzero(~known))} days without PIT left out")
     used = used.on(known)
-    pit = np.clip(used.pit, PIT_LIMIT, 1.0 - PIT_LIMIT)
-    clipped = int(np.count_nonzero(pit != used.pit))
-    notes += (f"{clipped} PITs clipped to {PIT_LIMIT:g} from 0 or 1",) * (clipped > 0)
+    pit, clipped = kept_inside(used.pit)
+    notes += (f"{clipped} PITs clipped to {NEAREST:g} from 0 or 1",) * (clipped > 0)
     repeated = len(np.unique(pit)) < len(pit) - max(clipped - 1, 0)
     notes += ("PITs repeat: ranks, whose law is coarser than the uniform one simulated",) * repeated
     return replace(used, pit=pit), "", notes

@@ -67,11 +67,16 @@ def read_pits(sample: Sample) -> Pits:
     used = sample.on(~np.isnan(sample.pit))
     if used.days == 0:
         return Pits(sample, "needs pit", ())
-    inside = np.clip(used.pit, NEAREST, 1.0 - NEAREST)
-    clipped = int(np.count_nonzero(inside != used.pit))
+    inside, clipped = kept_inside(used.pit)
     steps = rank_steps(used.pit, tail_is_law=bool(np.any(~np.isnan(used.shape))))
     found = Pits(replace(used, pit=inside), "", (), steps)
     return replace(found, notes=tuple(_notes(sample, found, clipped)))
+
+
+def kept_inside(pits: Floats) -> tuple[Floats, int]:
+    """Return PITs moved off 0 and 1, and how many were moved."""
+    inside = np.clip(pits, NEAREST, 1.0 - NEAREST)
+    return inside, int(np.count_nonzero(inside != pits))
 
 
 def _notes(sample: Sample, found: Pits, clipped: int) -> list[str]:

@@ -29,7 +29,7 @@ UNTRIED, FAILED, CONVERGED, FLAT_END, ACCEPTED = 0, -1, 1, 2, 3
 """How a start ended; flat: the curvature had to be helped in the last step. Accepted: not ended, a new step is due."""
 _WIDEST_PHI = 0.999
 
-THETA_AT, DIRECTION = 0, COUNT
+DIRECTION = COUNT
 AT_VALUE, AT_LENGTH, AT_SLOPE, AT_AFTER, BEST_VALUE, BEST_INDEX, STATE = (2 * COUNT + i for i in range(7))
 """Columns of ``state``: last accepted point of the start in hand and the direction from it; value there, step length,
 slope, next variance; best value and index of the grid."""

@@ -7,17 +7,15 @@ from backtest.reporting import wording as say
 from backtest.reporting.book import Book, Row, text
 from backtest.reporting.drawn import scope_at
 from backtest.reporting.effects import estimate
-from backtest.reporting.facts import DeskCounts, Scope
-from backtest.reporting.open_points import desk_counts
+from backtest.reporting.facts import DeskCounts
 from backtest.reporting.prose import prose
 from backtest.reporting.tables import Table, exceptions_cell, table
 
 NOTHING = "not tested: no day with both a forecast and a P&L"
 
 
-def anchors(book: Book, scope: Scope | None) -> dict[str, str]:
+def anchors(book: Book, counts: DeskCounts | None) -> dict[str, str]:
     """Return the desks in the order of the list with their anchors: the firm, then as rejected across desks."""
-    counts = desk_counts(book, scope) if scope else None
     firm = text(book.setting("review.firm"))
     ordered = sorted(book.desks, key=lambda desk: (desk != firm, _rank(desk, counts)))
     return {desk: f"desk-{i}" for i, desk in enumerate(ordered, start=1)}
@@ -29,15 +27,13 @@ def _rank(desk: str, counts: DeskCounts | None) -> int:
     return next((i for i, group in enumerate((counts.holm, counts.step_up, counts.rejected)) if desk in group), 3)
 
 
-def index_table(book: Book, scope: Scope | None) -> Table:
-    """Return the list of desks with counts, the multiple of VaR and the answer to how often."""
+def index_table(book: Book, counts: DeskCounts | None, places: dict[str, str]) -> Table:
+    """Return the list of desks, in the order of ``places`` (anchors), with counts, multiple and answer to how often."""
     levels = sorted({lv for d in book.desks for lv in book.levels(d, book.main_model)})
-    counts = desk_counts(book, scope) if scope else None
     header = ("Desk", "Days", *(f"Exceptions {say.level(lv)} (expected)" for lv in levels))
     header += (f"VaR multiple {say.level(levels[0]) if levels else ''} [95%]",)
     header += (f"Across desks, {say.level(counts.level)}",) if counts else ()
     header += ("Answer to how often (level)",)
-    places = anchors(book, scope)
     rows = [_row(book, desk, levels, counts) for desk in places]
     asked = say.plural(book.wanted_days, "day") if book.wanted_days else "all days"
     caption = f"Desks: {say.name(book.main_model) or 'no model'}, {asked} asked for, hypothetical P&L"

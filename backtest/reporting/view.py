@@ -12,7 +12,7 @@ from backtest.reporting.drawn import main_bridge, rule_count, scope_of
 from backtest.reporting.facts import Scope
 from backtest.reporting.index import anchors, index_table
 from backtest.reporting.logs import remarks_table
-from backtest.reporting.open_points import flagged
+from backtest.reporting.open_points import desk_counts, flagged
 from backtest.reporting.prose import prose
 from backtest.reporting.sentences import POSITIONS, Sentence, about, sentences
 from backtest.reporting.tables import Fact, Table, bridge_table, span_words, table, tests_used
@@ -56,6 +56,8 @@ def summary_view(record: Record) -> Summary:
     book = Book(record)
     scope = scope_of(book)
     bridge = main_bridge(book, scope) if scope else None
+    counts = desk_counts(book, scope) if scope else None
+    places = anchors(book, counts)
     return Summary(
         title=text(book.setting("title")) or "Market-risk model review",
         run=text(record.manifest.get("run")) or say.DASH,
@@ -66,8 +68,8 @@ def summary_view(record: Record) -> Summary:
         sentences=sentences(book),
         cautions=CAUTIONS,
         bridge=bridge_table(bridge) if bridge and bridge.steps else None,
-        index=index_table(book, scope),
-        desks=tuple(desk_view(book, desk, anchor) for desk, anchor in anchors(book, scope).items()),
+        index=index_table(book, counts, places),
+        desks=tuple(desk_view(book, desk, anchor) for desk, anchor in places.items()),
         models=_models(book),
         tests=tuple(Fact(*pair) for pair in tests_used(book)),
         remarks=remarks_table(record.remarks, f"Data remarks, {say.whole(len(record.remarks))} in all"),
